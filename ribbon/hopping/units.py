@@ -50,7 +50,7 @@ def boltzmann(unit: str) -> float:
             f'sweep.temperature needs an energy in eV or meV; hopping.unit is "{unit}", '
             "so set temperature = 0"
         )
-    return constants.k / joule
+    return float(constants.k / joule)
 
 
 def hbar2_over_2m(mass: float, unit: str) -> float:
@@ -63,4 +63,4 @@ def hbar2_over_2m(mass: float, unit: str) -> float:
     if joule is None:
         raise BadInput(f'hopping.mass needs the unit eV or meV, not "{unit}"')
     kinetic = constants.hbar**2 / (2 * mass * constants.m_e)
-    return kinetic / joule * 1e18
+    return float(kinetic / joule * 1e18)

@@ -62,7 +62,7 @@ class Strip:
 
     >>> strip = lay_strip("honeycomb-zigzag", rows=2, length=3)
     >>> strip.n, round(strip.circumference, 4), round(strip.width, 3)
-    (12, 0.7378, 0.568)
+    (12, 0.7379, 0.568)
     """
 
     lattice: Lattice
