@@ -101,7 +101,8 @@ def find_gap(
 ) -> Gap:
     """Frontier levels and gap at a filling with so many electrons, at zero temperature.
 
-    Raises `BadInput` where every level is full or empty, so that there is no gap to speak of.
+    Where every level is full or empty there is no gap to speak of: ``upper`` or ``lower`` and
+    ``gap`` are then NaN.
 
     >>> from ribbon.lattice import Network
     >>> from ribbon.hopping import Hopping, assemble
@@ -114,10 +115,7 @@ def find_gap(
     highest = int(np.ceil(number / spin - 1e-12)) - 1
     lowest = int(np.floor(number / spin + 1e-12))
     if highest < 0 or lowest >= hamiltonian.n:
-        raise BadInput(
-            f"{number:g} electrons with spin = {spin} leave all {hamiltonian.n} levels "
-            f"{'empty' if highest < 0 else 'full'}; there is no gap between frontier levels"
-        )
+        return _no_gap(hamiltonian, flux, full=highest >= 0)
     if blocks_of(hamiltonian) is not None or fits_small(hamiltonian, flux):
         energies = all_levels(hamiltonian, flux=flux).energies
         lower, upper = float(energies[highest]), float(energies[lowest])
@@ -134,6 +132,20 @@ def find_gap(
         lower_index=highest,
         upper_index=lowest,
         open_shell=open_shell,
+    )
+
+
+def _no_gap(hamiltonian: Hamiltonian, flux: float, *, full: bool) -> Gap:
+    """Frontier of a spectrum that is full or empty: one level, and no gap."""
+    place = hamiltonian.n - 1 if full else 0
+    energy = float(levels_at(hamiltonian, place, place, flux=flux).energies[-1 if full else 0])
+    return Gap(
+        lower=energy if full else float("nan"),
+        upper=float("nan") if full else energy,
+        gap=float("nan"),
+        lower_index=place if full else -1,
+        upper_index=hamiltonian.n if full else place,
+        open_shell=False,
     )
 
 

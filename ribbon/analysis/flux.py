@@ -127,7 +127,7 @@ def sweep_flux(
     >>> ring = close_strip(lay_strip("square", rows=1, length=6), half_twists=0)
     >>> response = sweep_flux(assemble(ring, Hopping()), [0.0, 0.25, 0.5])
     >>> [round(float(value), 6) + 0.0 for value in response.totals.slope]
-    [0.0, 2.167564, 0.0]
+    [0.0, 2.168277, 0.0]
     """
     points = np.array(fluxes, dtype=np.float64).ravel()
     if points.size == 0 or not np.isfinite(points).all():

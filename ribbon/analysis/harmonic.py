@@ -45,18 +45,19 @@ class HalfQuantum:
 
 
 def harmonics(totals: Totals, *, orders: int = 8) -> Harmonics:
-    """Fourier harmonics of the total current over one period of the flux.
+    """Fourier harmonics of the total current over whole periods of the flux.
 
-    Raises `BadInput` unless the sweep covers exactly one flux quantum in equal steps.
+    Raises `BadInput` unless the sweep covers whole flux quanta in equal steps.
     """
     flux = totals.flux
-    if not _covers_one_period(flux):
+    periods = _periods(flux)
+    if not periods:
         raise BadInput(
-            "harmonics need sweep.flux over exactly one flux quantum in equal steps, such as "
+            "harmonics need sweep.flux over one whole flux quantum in equal steps, such as "
             "{ from = 0.0, to = 1.0, points = 101 }"
         )
     count = flux.size - 1
-    order = np.arange(1, min(orders, (count - 1) // 2) + 1)
+    order = np.arange(1, min(orders, (count // periods - 1) // 2) + 1)
     angle = 2 * np.pi * np.outer(order, flux[:-1])
     current = -totals.slope[:-1]
     return Harmonics(
@@ -87,13 +88,21 @@ def half_quantum(hamiltonian: Hamiltonian, totals: Totals | None = None) -> Half
 
 
 def _current_difference(totals: Totals | None) -> float | None:
-    if totals is None or not _covers_one_period(totals.flux) or totals.flux.size % 2 == 0:
+    periods = 0 if totals is None else _periods(totals.flux)
+    if totals is None or not periods or (totals.flux.size - 1) % (2 * periods):
         return None
-    half = (totals.flux.size - 1) // 2
-    return float(np.abs(totals.slope[:half] - totals.slope[half:-1]).max())
+    half = (totals.flux.size - 1) // (2 * periods)
+    once = totals.slope[:-1]
+    return float(np.abs(once - np.roll(once, -half)).max())
 
 
-def _covers_one_period(flux: FloatArray) -> bool:
+def _periods(flux: FloatArray) -> int:
+    """How many whole flux quanta an evenly spaced sweep covers; 0 for any other sweep."""
+    if flux.size < 3:
+        return 0
     steps = np.diff(flux)
-    even = flux.size > 2 and bool(np.allclose(steps, steps[0], rtol=0, atol=1e-9))
-    return even and abs(abs(flux[-1] - flux[0]) - 1) <= 1e-9
+    span = float(flux[-1] - flux[0])
+    even = bool(np.allclose(steps, steps[0], rtol=0, atol=1e-9))
+    whole = round(span)
+    fits = whole >= 1 and (flux.size - 1) % whole == 0
+    return whole if even and fits and abs(span - whole) <= 1e-9 else 0

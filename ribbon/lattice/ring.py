@@ -8,6 +8,7 @@ itself or the same partner more than once, are multigraphs and come out right.
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
+from typing import TypeVar
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -29,6 +30,9 @@ __all__ = [
     "remove_sites",
     "reseam",
 ]
+
+
+AnyNetwork = TypeVar("AnyNetwork", bound=Network)
 
 
 @dataclass(frozen=True, kw_only=True, eq=False)
@@ -174,27 +178,29 @@ def double_cover(ring: Ring) -> tuple[Ring, IntArray]:
     return remove_sites(cover, np.flatnonzero(below < 0)), frozen(below[below >= 0])
 
 
-def remove_sites(ring: Ring, sites: ArrayLike) -> Ring:
-    """The ring without some of its sites (vacancies), numbered anew in the same order.
+def remove_sites(network: AnyNetwork, sites: ArrayLike) -> AnyNetwork:
+    """The network without some of its sites (vacancies), numbered anew in the same order.
 
     Raises `BadInput` for a site that does not exist or when none would be left.
     """
     gone = np.unique(np.asarray(sites, dtype=np.int64))
-    if gone.size and (gone[0] < 0 or gone[-1] >= ring.n):
-        raise BadInput(f"cannot remove site {gone[-1]}: sites are numbered 0 to {ring.n - 1}")
-    if gone.size == ring.n:
+    if gone.size and (gone[0] < 0 or gone[-1] >= network.n):
+        raise BadInput(f"cannot remove site {gone[-1]}: sites are numbered 0 to {network.n - 1}")
+    if gone.size == network.n:
         raise BadInput("removing every site leaves nothing to compute")
-    stays = np.ones(ring.n, dtype=bool)
+    stays = np.ones(network.n, dtype=bool)
     stays[gone] = False
     number = np.cumsum(stays) - 1
-    bonds = ring.bonds.select(stays[ring.bonds.tail] & stays[ring.bonds.head])
-    kept = np.flatnonzero(stays) if ring.kept is None else ring.kept[stays]
-    return replace(
-        ring,
-        positions=ring.positions[stays],
+    bonds = network.bonds.select(stays[network.bonds.tail] & stays[network.bonds.head])
+    smaller = replace(
+        network,
+        positions=network.positions[stays],
         bonds=replace(bonds, tail=number[bonds.tail], head=number[bonds.head]),
-        kept=frozen(kept),
     )
+    if isinstance(smaller, Ring):
+        kept = np.flatnonzero(stays) if smaller.kept is None else smaller.kept[stays]
+        return replace(smaller, kept=frozen(kept))
+    return smaller
 
 
 def reseam(

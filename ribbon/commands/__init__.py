@@ -1,0 +1,1 @@
+"""The verbs of the `ribbon` command, one small module for each group of them."""

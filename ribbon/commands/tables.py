@@ -1,0 +1,97 @@
+"""Verbs whose answer is a table: `levels` and `flux`."""
+
+from __future__ import annotations
+
+from pathlib import Path
+from typing import Annotated, TypeAlias
+
+import typer
+
+from ribbon.commands.answer import deliver, heading, judge, known, load, trust
+from ribbon.commands.options import AsJson, File, Quiet, Set
+from ribbon.commands.output import check_target
+from ribbon.commands.progress import Progress
+from ribbon.errors import BadInput, TooLarge
+
+__all__ = ["flux", "levels"]
+
+Out: TypeAlias = Annotated[
+    Path | None,
+    typer.Option("--out", metavar="TABLE.csv", help="Write the table here, not to stdout."),
+]
+
+
+def levels(
+    file: File,
+    out: Out = None,
+    as_json: AsJson = False,
+    overrides: Set = None,
+    quiet: Quiet = False,
+) -> None:
+    """Print the levels that the file asks for (CSV)."""
+    check_target(out, not_over=file)
+    ribbon_file = load(file, overrides)
+    from ribbon.study.run import run_levels  # noqa: PLC0415
+    from ribbon.study.tables import levels_table  # noqa: PLC0415
+
+    with Progress(quiet=quiet) as progress:
+        result, doubt = known(lambda: run_levels(ribbon_file, progress=progress))
+    case = result.ribbon
+    table = levels_table(case, ribbon_file.hopping.unit)
+    story = {
+        **heading(result),
+        "flux": case.flux,
+        "levels": table,
+        "gap": case.gap,
+        "other_gap": case.other_gap,
+        "certificate": case.levels.certificate,
+        "residual": case.levels.residual,
+        **trust(result),
+    }
+    files = {} if out is None else {out: table}
+    deliver(table, story, files=files, as_json=as_json, quiet=quiet)
+    judge(result, doubt)
+
+
+def flux(
+    file: File,
+    out: Out = None,
+    totals: Annotated[
+        Path | None,
+        typer.Option("--totals", metavar="TABLE.csv", help="Write the table of totals here."),
+    ] = None,
+    as_json: AsJson = False,
+    overrides: Set = None,
+    quiet: Quiet = False,
+) -> None:
+    """Print levels and currents against flux (CSV)."""
+    if out is not None and totals is not None and out.resolve() == totals.resolve():
+        raise BadInput(f"--out and --totals both name {out}; give each table its own file")
+    check_target(out, not_over=file)
+    check_target(totals, not_over=file)
+    ribbon_file = load(file, overrides)
+    from ribbon.hopping.units import current_factor  # noqa: PLC0415
+    from ribbon.study.run import run_flux  # noqa: PLC0415
+    from ribbon.study.tables import flux_table, totals_table  # noqa: PLC0415
+
+    with Progress(quiet=quiet) as progress:
+        result, doubt = known(lambda: run_flux(ribbon_file, progress=progress))
+    case, unit = result.ribbon, ribbon_file.hopping.unit
+    table = flux_table(case, unit)
+    summed = case.response is not None and case.response.totals is not None
+    sums = totals_table(case, unit) if summed else None
+    if totals is not None and sums is None:
+        raise TooLarge(" ".join(line for line in result.notes if line.startswith("totals")))
+    story = {
+        **heading(result),
+        "current_unit": current_factor(unit)[1],
+        "flux": table,
+        "totals": sums,
+        "harmonics": case.harmonics,
+        "half_quantum": case.half,
+        **trust(result),
+    }
+    wanted = ((out, table), (totals, sums))
+    files = {path: entry for path, entry in wanted if path is not None and entry is not None}
+    deliver(table, story, files=files, as_json=as_json, quiet=quiet)
+    judge(result, doubt)

@@ -1,0 +1,346 @@
+"""From a ribbon file to the Hamiltonian of the ribbon and those of its controls."""
+
+from __future__ import annotations
+
+import os
+from dataclasses import dataclass, replace
+from typing import TYPE_CHECKING, Literal
+
+import numpy as np
+from scipy.sparse import coo_array
+from scipy.sparse.csgraph import connected_components
+
+from ribbon.analysis import Filling, Window
+from ribbon.analysis.levels import FloatArray
+from ribbon.errors import BadInput, TooLarge
+from ribbon.hopping import Hamiltonian, Hopping, assemble, draw_vacancies, effective_mass
+from ribbon.lattice import (
+    Lattice,
+    Network,
+    Ring,
+    Strip,
+    close_strip,
+    double_cover,
+    fit_strip,
+    lay_strip,
+    open_strip,
+    read_lattice,
+    remove_sites,
+    reseam,
+)
+from ribbon.study.result import CaseName
+from ribbon.study.site_table import read_site_table
+
+if TYPE_CHECKING:
+    from ribbon.study.ribbonfile import RibbonFile
+
+__all__ = ["BYTES_PER_SITE", "Model", "Plan", "build", "build_controls", "on_network", "strip_of"]
+
+BYTES_PER_SITE = 1500
+"""Measured peak of building bonds and matrix, rounded up."""
+
+
+@dataclass(frozen=True, kw_only=True, eq=False)
+class Model:
+    """One ring to compute: its Hamiltonian, its name, and how its flux and filling scale."""
+
+    name: CaseName
+    label: str
+    hamiltonian: Hamiltonian
+    flux_scale: float = 1.0
+    size_scale: int = 1
+
+
+@dataclass(frozen=True, kw_only=True, eq=False)
+class Plan:
+    """The ribbon of a file, ready to compute, with what the file asks for."""
+
+    file: RibbonFile
+    model: Model
+    window: Window
+    filling: Filling
+    notes: tuple[str, ...]
+
+    @property
+    def ring(self) -> Ring:
+        """The ring of the ribbon."""
+        ring = self.model.hamiltonian.ring
+        assert ring is not None
+        return ring
+
+    @property
+    def fluxes(self) -> FloatArray:
+        """Fluxes of the sweep through the ribbon."""
+        sweep = self.file.sweep.flux
+        return np.linspace(sweep.from_, sweep.to, sweep.points)
+
+    def window_for(self, model: Model) -> Window:
+        """The window of a case: a cover that is twice as large has twice as many levels."""
+        return replace(self.window, count=self.window.count * model.size_scale)
+
+    def filling_for(self, model: Model) -> Filling:
+        """The filling of a case: numbers of electrons grow with the cover."""
+        electrons = self.filling.electrons
+        if isinstance(electrons, str) or electrons is None:
+            return self.filling
+        return replace(self.filling, electrons=electrons * model.size_scale)
+
+
+def strip_of(file: RibbonFile) -> tuple[Strip, tuple[str, ...]]:
+    """The strip that the file lays, and notes on how its size was found."""
+    ribbon = file.ribbon
+    lattice = read_lattice(file.lattice_path_or_name)
+    rows, length = ribbon.rows, ribbon.length
+    notes: list[str] = []
+    if rows is None or length is None:
+        rows, length = fit_strip(
+            lattice,
+            half_twists=ribbon.half_twists,
+            spacing=ribbon.spacing,
+            rows=ribbon.rows,
+            width=ribbon.width_nm,
+            length=ribbon.length,
+            length_nm=ribbon.length_nm,
+        )
+    strip = lay_strip(lattice, rows=rows, length=length, spacing=ribbon.spacing)
+    for key, wanted, got in (
+        ("width_nm", ribbon.width_nm, strip.width),
+        ("length_nm", ribbon.length_nm, strip.circumference),
+    ):
+        if wanted is not None:
+            notes.append(
+                f"{key} = {wanted:g}: the nearest size that closes has {got:.6g} nm "
+                f"({100 * (got / wanted - 1):+.2f} %), rows = {rows}, length = {length:g}"
+            )
+    return strip, tuple(notes)
+
+
+def build(file: RibbonFile) -> Plan:
+    """Build the ribbon of a file. Raises `BadInput` for what cannot be built."""
+    strip, size_notes = strip_of(file)
+    _check_memory(strip.n)
+    shells = 1 if file.hopping.shells is None else len(file.hopping.shells)
+    ring = close_strip(
+        strip,
+        half_twists=file.ribbon.half_twists,
+        orbital=file.ribbon.orbital,
+        shells=shells,
+    )
+    _check_pieces(ring)
+    notes = [*size_notes, *_mass_notes(file, strip.lattice)]
+    if file.disorder.vacancies:
+        gone = draw_vacancies(ring.n, file.disorder.vacancies, seed=file.disorder.seed)
+        ring = remove_sites(ring, gone)
+        notes.append(f"{gone.size} of {strip.n} sites were taken out (seed {file.disorder.seed})")
+    hamiltonian = assemble(ring, _hopping(file, ring))
+    return Plan(
+        file=file,
+        model=Model(name="ribbon", label=_label(file.ribbon.half_twists), hamiltonian=hamiltonian),
+        window=_window(file),
+        filling=Filling(
+            electrons=_electrons(file),
+            chemical_potential=file.sweep.chemical_potential,
+            spin=file.sweep.spin,
+            temperature=file.sweep.temperature,
+        ),
+        notes=tuple(notes),
+    )
+
+
+def build_controls(plan: Plan) -> tuple[tuple[Model, ...], tuple[str, ...]]:
+    """The controls that the file asks for, and notes on those that do not exist."""
+    models: list[Model] = []
+    notes: list[str] = []
+    for name in plan.file.control.compare:
+        found, note = _CONTROLS[name](plan)
+        models += found
+        notes += note
+    return tuple(models), tuple(notes)
+
+
+def on_network(hamiltonian: Hamiltonian, network: Network, energies: FloatArray) -> Hamiltonian:
+    """The same amplitudes on another network, with these site energies."""
+    hopping = replace(hamiltonian.hopping, site_energy=energies, disorder=0.0)
+    return assemble(network, hopping)
+
+
+def _plain(plan: Plan) -> tuple[list[Model], list[str]]:
+    ring, hamiltonian = plan.ring, plan.model.hamiltonian
+    if ring.half_twists == 0:
+        return [], ["the ribbon is the plain ring itself; it has no plain control"]
+    try:
+        plain = reseam(ring, half_twists=0)
+    except BadInput:
+        return _neighbours(plan)
+    model = Model(
+        name="plain",
+        label="plain ring",
+        hamiltonian=on_network(hamiltonian, plain, hamiltonian.site_energies),
+    )
+    return [model], []
+
+
+def _neighbours(plan: Plan) -> tuple[list[Model], list[str]]:
+    """Plain rings half a period shorter and longer, where that of the same length is none."""
+    ring, hamiltonian = plan.ring, plan.model.hamiltonian
+    cover, lift = double_cover(ring)
+    held = np.arange(cover.strip.n) if cover.kept is None else cover.kept
+    energies = np.full(cover.strip.n, np.nan)
+    energies[held] = hamiltonian.site_energies[lift]
+    models = []
+    names: tuple[tuple[CaseName, float], ...] = (("shorter", -0.5), ("longer", 0.5))
+    for name, step in names:
+        length = ring.strip.length + step
+        if length <= 0:
+            continue
+        strip = lay_strip(
+            ring.strip.lattice, rows=ring.strip.rows, length=length, spacing=ring.strip.spacing
+        )
+        near = close_strip(strip, half_twists=0, shells=ring.shells)
+        values = energies[: strip.n]
+        near = remove_sites(near, np.flatnonzero(np.isnan(values)))
+        models.append(
+            Model(
+                name=name,
+                label=f"plain ring, {name} by half a period",
+                hamiltonian=on_network(hamiltonian, near, values[~np.isnan(values)]),
+            )
+        )
+    note = (
+        f"no plain ring of length {ring.strip.length:g} exists; its neighbours, half a period "
+        "shorter and longer, stand in its place beside the double cover"
+    )
+    return models, [note]
+
+
+def _double(plan: Plan) -> tuple[list[Model], list[str]]:
+    hamiltonian = plan.model.hamiltonian
+    cover, lift = double_cover(plan.ring)
+    model = Model(
+        name="double",
+        label="double cover",
+        hamiltonian=on_network(hamiltonian, cover, hamiltonian.site_energies[lift]),
+        flux_scale=2.0,
+        size_scale=2,
+    )
+    return [model], []
+
+
+def _open(plan: Plan) -> tuple[list[Model], list[str]]:
+    ring, hamiltonian = plan.ring, plan.model.hamiltonian
+    network = open_strip(ring.strip, shells=ring.shells)
+    if ring.kept is not None:
+        network = remove_sites(network, np.setdiff1d(np.arange(ring.strip.n), ring.kept))
+    used = int(np.max(network.bonds.shell, initial=1))
+    hopping = replace(
+        hamiltonian.hopping,
+        shells=hamiltonian.hopping.shells[:used],
+        site_energy=hamiltonian.site_energies,
+        disorder=0.0,
+    )
+    return [Model(name="open", label="open strip", hamiltonian=assemble(network, hopping))], []
+
+
+_CONTROLS = {"plain": _plain, "double": _double, "open": _open}
+
+
+def _label(half_twists: int) -> str:
+    if half_twists == 0:
+        return "plain ring"
+    return "one half twist" if half_twists == 1 else f"{half_twists} half twists"
+
+
+def _hopping(file: RibbonFile, ring: Ring) -> Hopping:
+    keys = file.hopping
+    if keys.mass is not None:
+        base = effective_mass(keys.mass, ring.strip.spacing, unit=keys.unit)
+        bottom = 4 * base.shells[0]
+    else:
+        assert keys.shells is not None
+        base, bottom = Hopping(shells=keys.shells, unit=keys.unit), 0.0
+    return replace(
+        base,
+        site_energy=_site_energy(file, ring, bottom),
+        disorder=file.disorder.strength,
+        seed=file.disorder.seed,
+    )
+
+
+def _site_energy(
+    file: RibbonFile, ring: Ring, bottom: float
+) -> float | dict[str, float] | FloatArray:
+    keys = file.hopping
+    if file.site_table_path is not None:
+        energies = read_site_table(file.site_table_path, ring.strip.n) + bottom
+        return np.asarray(energies if ring.kept is None else energies[ring.kept])
+    if isinstance(keys.site_energy, dict):
+        labels = {str(label) for label in ring.strip.cell.sublattice}
+        named = dict(keys.site_energy)
+        return named if not bottom else {k: named.get(k, 0.0) + bottom for k in labels | set(named)}
+    return float(keys.site_energy or 0.0) + bottom
+
+
+def _mass_notes(file: RibbonFile, lattice: Lattice) -> list[str]:
+    if file.hopping.mass is None:
+        return []
+    line = lattice.lines[0]
+    square = (
+        len(lattice.lines) == 1
+        and len(line.x) == 1
+        and abs(lattice.period - 1) < 1e-9
+        and abs(lattice.repeat[1] - 1) < 1e-9
+        and abs(lattice.repeat[0] % 1) < 1e-9
+    )
+    if not square:
+        raise BadInput(
+            f'hopping.mass needs the square lattice, not "{lattice.name}"; give hopping.shells'
+        )
+    if file.ribbon.spacing is None:
+        return [
+            f"ribbon.spacing was left at {lattice.spacing:g} nm; with hopping.mass it sets the "
+            "mesh and with it the energies: state it"
+        ]
+    return []
+
+
+def _electrons(file: RibbonFile) -> float | Literal["neutral"] | None:
+    electrons = file.sweep.electrons
+    if electrons is None or isinstance(electrons, str):
+        return None if electrons is None else "neutral"
+    return float(electrons)
+
+
+def _window(file: RibbonFile) -> Window:
+    keys = file.levels
+    between = None if keys.between is None else (keys.between[0], keys.between[1])
+    return Window(near=keys.near, count=keys.count or 40, between=between, all=keys.all)
+
+
+def _check_pieces(ring: Ring) -> None:
+    """Refuse a ring whose complete strip already falls into pieces (armchair, one row)."""
+    bonds = ring.bonds
+    graph = coo_array((np.ones(bonds.m), (bonds.tail, bonds.head)), shape=(ring.n, ring.n))
+    pieces, _ = connected_components(graph, directed=False)
+    if pieces > 1:
+        raise BadInput(
+            f"ribbon.rows = {ring.strip.rows} of {ring.strip.lattice.name} falls into {pieces} "
+            f"detached pieces; rows = {ring.strip.rows + 1} or more hold together"
+        )
+
+
+def _check_memory(sites: int) -> None:
+    need = sites * BYTES_PER_SITE
+    have = _available_bytes()
+    if need > 0.8 * have:
+        raise TooLarge(
+            f"{sites:,} sites need about {need / 1024**3:.1f} GiB to build, and "
+            f"{have / 1024**3:.1f} GiB are free here; fewer ribbon.rows or a shorter "
+            f"ribbon.length with at most {int(0.8 * have / BYTES_PER_SITE):,} sites would fit"
+        )
+
+
+def _available_bytes() -> int:
+    try:
+        return int(os.sysconf("SC_AVPHYS_PAGES") * os.sysconf("SC_PAGE_SIZE"))
+    except (AttributeError, OSError, ValueError):  # not every system tells
+        return 8 * 1024**3

@@ -1,0 +1,72 @@
+"""What a job will cost, said before it starts; rough, from a few measured constants."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from ribbon.analysis import Window
+from ribbon.analysis.exact import blocks_of, dense_bytes, fits_dense
+from ribbon.analysis.levels import FloatArray
+from ribbon.hopping import Hamiltonian
+
+__all__ = ["Forecast", "forecast_levels", "forecast_sweep"]
+
+# seconds on one core of 2020s hardware, measured with the benchmark of this project
+DENSE_STATES = 4.0e-10
+DENSE_VALUES = 1.5e-10
+BLOCK = 2.0e-9
+BLOCK_BASE = 2.0e-6
+SPARSE_SITE = 1.0e-4
+
+
+@dataclass(frozen=True, kw_only=True)
+class Forecast:
+    """Expected time in seconds and memory in bytes, and the method it is for."""
+
+    method: str
+    seconds: float
+    bytes: int
+
+    @property
+    def memory(self) -> str:
+        """The memory in words."""
+        if self.bytes >= 1024**3:
+            return f"{self.bytes / 1024**3:.1f} GiB"
+        return f"{max(1, round(self.bytes / 1024**2))} MiB"
+
+
+def forecast_levels(hamiltonian: Hamiltonian, window: Window, flux: float) -> Forecast:
+    """Expected cost of one window of levels."""
+    n = hamiltonian.n
+    blocks = blocks_of(hamiltonian)
+    if blocks is not None:
+        seconds = sum(
+            s.momenta.size * (BLOCK_BASE + BLOCK * s.size**3) + 1e-7 * s.size**2 * s.momenta.size
+            for s in blocks.sectors
+        )
+        store = sum(16 * 4 * s.momenta.size * s.size**2 for s in blocks.sectors)
+        return Forecast(method="symmetry", seconds=seconds, bytes=store)
+    if window.all and fits_dense(hamiltonian, flux, states=True):
+        return _dense(n, DENSE_STATES)
+    if n <= 600:
+        return _dense(n, DENSE_VALUES)
+    seconds = SPARSE_SITE * n * (1 + (window.count or 40) / 40)
+    return Forecast(method="sparse", seconds=seconds, bytes=n * (1500 + 32 * window.count))
+
+
+def forecast_sweep(hamiltonian: Hamiltonian, fluxes: FloatArray, window: Window) -> Forecast:
+    """Expected cost of a flux sweep."""
+    one = forecast_levels(hamiltonian, window, 0.25)
+    points = fluxes.size
+    if one.method != "symmetry" and fits_dense(hamiltonian, 0.25, states=True):
+        one = _dense(hamiltonian.n, DENSE_STATES)
+        reduced = np.abs(fluxes - np.rint(fluxes)).round(12)
+        points = np.unique(reduced).size
+    return Forecast(method=one.method, seconds=one.seconds * points, bytes=one.bytes)
+
+
+def _dense(n: int, cost: float) -> Forecast:
+    need = dense_bytes(n, complex_=True, states=True)
+    return Forecast(method="dense", seconds=cost * n**3, bytes=need)
