@@ -21,7 +21,7 @@ from hypothesis import strategies as st
 from ribbon.analysis import all_levels, count_below, levels_between, levels_near
 from ribbon.errors import BadInput
 from ribbon.hopping import Hopping, assemble, draw_vacancies
-from ribbon.lattice import Network, close_strip, lay_strip, remove_sites
+from ribbon.lattice import Network, certify_topology, close_strip, lay_strip, remove_sites
 
 Build = Callable[..., Any]
 LEVEL = 1e-9
@@ -321,3 +321,25 @@ def test_complete_spectra_are_certified(lattice: str, hamiltonian_of: Build) -> 
     case = cases((lattice,), rows=(3,), lengths=(4, 4.5))[0]
     found = all_levels(hamiltonian_of(case), flux=0.1)
     assert_window(found, case.levels(0.1), 0, case.sites())
+
+
+@pytest.mark.parametrize("flux", [0.0, 0.2])
+@pytest.mark.parametrize("fraction", [0.05, 0.2])
+def test_zero_levels_of_a_ribbon_with_vacancies(
+    fraction: float, flux: float, ring_of: Build
+) -> None:
+    """Graphene with missing sites: many levels exactly at the energy asked for.
+
+    The shifted matrix is singular many times over, which elimination must survive; the zero
+    levels number at least what the bipartite ring owes to its sublattices (Lieb 1989 [M]).
+    """
+    ring = ring_of(Case("honeycomb-armchair", 9, 60, 1, -1))
+    ring = remove_sites(ring, draw_vacancies(ring.n, fraction, seed=1))
+    hamiltonian = assemble(ring, Hopping(shells=(1.0,), unit="t"))
+    levels = np.linalg.eigvalsh(hamiltonian.matrix(flux).toarray())
+    found = levels_near(hamiltonian, 0.0, count=40, flux=flux, method="sparse")
+    first, last = int(found.index[0]), int(found.index[-1]) + 1
+    assert_window(found, levels, first, last)
+    owed = certify_topology(ring).guaranteed_zero_levels
+    assert owed
+    assert np.count_nonzero(np.abs(levels) < LEVEL) >= owed

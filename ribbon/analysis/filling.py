@@ -15,7 +15,7 @@ from scipy.optimize import brentq
 from scipy.special import expit, xlogy
 
 from ribbon.analysis.exact import blocks_of, fits_dense
-from ribbon.analysis.levels import FloatArray, IntArray, Levels, shell_edges, tolerance
+from ribbon.analysis.levels import SAME, FloatArray, IntArray, Levels, shell_edges, tolerance
 from ribbon.analysis.spectrum import all_levels, levels_at
 from ribbon.errors import BadInput
 from ribbon.hopping import Hamiltonian
@@ -218,7 +218,7 @@ def _occupy(
             assert number is not None
             potential = _solve_potential(energies, number / filling.spin, thermal)
         return filling.spin * expit((potential - energies) / thermal), potential, None
-    same = 1e-9 * scale
+    same = SAME * scale
     if number is None:
         assert filling.chemical_potential is not None
         return _below(energies, filling.chemical_potential, filling.spin, same)

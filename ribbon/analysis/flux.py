@@ -130,6 +130,7 @@ def sweep_flux(
     [0.0, 2.168277, 0.0]
     """
     points = np.array(fluxes, dtype=np.float64).ravel()
+    points.setflags(write=False)
     if points.size == 0 or not np.isfinite(points).all():
         raise BadInput("sweep.flux must be a list of finite fluxes, at least one")
     if hamiltonian.ring is None:

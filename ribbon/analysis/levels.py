@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from ribbon.hopping import Hamiltonian
 
 __all__ = [
+    "SAME",
     "AnyArray",
     "Certificate",
     "FloatArray",
@@ -25,6 +26,7 @@ IntArray = NDArray[np.int64]
 AnyArray = NDArray[Any]
 
 SAME = 1e-10
+"""Levels closer than this part of a bound of the spectrum are one shell."""
 
 
 def tolerance(hamiltonian: Hamiltonian) -> float:

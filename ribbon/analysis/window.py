@@ -23,6 +23,8 @@ __all__ = ["Found", "levels_of_window", "nearest_levels"]
 ROUNDS = 8
 SPARE = 6
 CONVERGED = 1e-9
+OFFSETS = (1.618034e-7, -2.718282e-7, 3.141593e-6)
+"""Shifts in units of the scale, at numbers on which no level stands by design."""
 
 
 @dataclass(frozen=True, kw_only=True, eq=False)
@@ -115,12 +117,14 @@ def _invert(
 
 
 def _factorise(matrix: csr_array, energy: float, scale: float) -> SuperLU:
-    """LU of matrix - energy, moved off a level where the shift hits one exactly.
+    """LU of matrix - energy, the shift moved a little so that it hits no level exactly.
 
-    Full partial pivoting: clean lattices at special energies break weaker kinds.
+    Levels of clean lattices sit on round energies, and an exactly singular matrix not only has
+    no LU: SuperLU can take the whole process down on one. Full partial pivoting: special
+    energies break weaker kinds.
     """
     identity = eye_array(matrix.shape[0], format="csc", dtype=matrix.dtype)
-    for step in (0.0, 1e-9, -3e-9, 1e-7, -3e-7):
+    for step in OFFSETS:
         shifted = csc_array(matrix - (energy + step * scale) * identity)
         try:
             return splu(shifted, permc_spec="COLAMD")

@@ -51,7 +51,11 @@ class Hopping:
     unit: str = "t"
 
     def __post_init__(self) -> None:
-        """Check the numbers."""
+        """Check the numbers; an array of site energies is copied and read-only from then on."""
+        if isinstance(self.site_energy, np.ndarray):
+            held = np.array(self.site_energy, dtype=np.float64)
+            held.setflags(write=False)
+            object.__setattr__(self, "site_energy", held)
         check_unit(self.unit)
         if not 1 <= len(self.shells) <= 3:
             raise BadInput(f"hopping.shells = {list(self.shells)} must be one to three numbers")

@@ -196,7 +196,9 @@ def _with_sweep(plan: Plan, model: Model, case: Case, progress: Progress) -> tup
             f"totals of the {model.label} are left out: they need the complete spectrum of "
             f"{model.hamiltonian.n:,} sites without symmetry, which does not fit"
         )
-    return replace(case, response=response, harmonics=_harmonics(response), half=half), notes
+    # harmonics of the cover would count its own flux quanta, half of those of the ribbon
+    found = _harmonics(response) if model.flux_scale == 1.0 else None
+    return replace(case, response=response, harmonics=found, half=half), notes
 
 
 def _cheap(model: Model) -> bool:

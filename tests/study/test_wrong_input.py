@@ -5,6 +5,9 @@ from __future__ import annotations
 import errno
 import os
 import resource
+import shutil
+import subprocess
+import sys
 from collections.abc import Iterator, Mapping
 from contextlib import contextmanager
 from pathlib import Path
@@ -360,6 +363,15 @@ def untouched(folder: Path) -> Iterator[None]:
     assert files_in(folder) == before
 
 
+@pytest.fixture(scope="module")
+def made(tmp_path_factory: pytest.TempPathFactory) -> Path:
+    """A study folder, made once."""
+    folder = tmp_path_factory.mktemp("made")
+    (folder / "study.toml").write_text(ribbon(control="compare = []"))
+    assert main(["study", str(folder / "study.toml"), "--out", str(folder / "old")]) == 0
+    return folder / "old"
+
+
 @pytest.fixture
 def here(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Path:
     monkeypatch.chdir(tmp_path)
@@ -484,10 +496,11 @@ WRITERS = [
 
 
 @pytest.mark.parametrize("arguments", WRITERS, ids=" ".join)
-def test_a_disk_that_fills_up_leaves_nothing(arguments, here, capsys):
+def test_a_disk_that_fills_up_leaves_nothing(arguments, here, made, capsys):
     """The system cuts the writing short after 64 bytes: one sentence, and all is as before."""
     if "--replace" in arguments:
-        assert run(capsys, "study", "study.toml", "--out", "old")[0] == 0
+        shutil.copytree(made, here / "old")
+    capsys.readouterr()
     with untouched(here), full_disk(64):
         refused(run(capsys, *arguments), "cannot be written", "File too large")
 
@@ -531,7 +544,7 @@ def test_a_folder_that_is_no_study_is_never_replaced(here, capsys):
     with untouched(here):
         refused(run(capsys, "study", "study.toml", "--out", "thesis"), "thesis")
         options = ("--out", "thesis", "--replace")
-        refused(run(capsys, "study", "study.toml", *options), "thesis", "study folder")
+        refused(run(capsys, "study", "study.toml", *options), "thesis", "no study wrote")
 
 
 def test_a_file_in_the_place_of_the_folder_is_never_replaced(here, capsys):
@@ -541,13 +554,37 @@ def test_a_file_in_the_place_of_the_folder_is_never_replaced(here, capsys):
         refused(run(capsys, "study", "study.toml", "--replace"), "study-study")
 
 
-def test_an_existing_study_is_replaced_only_when_asked(here, capsys):
-    """Without --replace the sentence names the option."""
-    assert run(capsys, "study", "study.toml")[0] == 0
+def test_an_existing_study_is_replaced_only_when_asked(here, made, capsys):
+    """Without --replace the sentence names the option; with it the old folder is gone."""
+    shutil.copytree(made, here / "study-study")
+    (here / "study-study" / "stray.txt").write_text("of the old study")
+    capsys.readouterr()
     with untouched(here):
         refused(run(capsys, "study", "study.toml"), "study-study", "--replace")
-    assert run(capsys, "study", "study.toml", "--replace", "--set", "ribbon.rows=4")[0] == 0
+    options = ("--set", "ribbon.rows=4", "--set", "control.compare=[]", "--quiet")
+    assert run(capsys, "study", "study.toml", "--replace", *options)[0] == 0
     assert "rows = 4" in (here / "study-study" / "study.toml").read_text()
+    assert not (here / "study-study" / "stray.txt").exists()
+    assert sorted(path.name for path in here.iterdir()) == ["study-study", "study.toml"]
+
+
+def test_a_disk_that_fills_up_at_the_results_leaves_nothing(here):
+    """The binary results are by far the largest file; their library must not crash on it.
+
+    All states of 240 sites take 900 kB; the shell limits files to 500 kB, figures are smaller.
+    """
+    options = "--set ribbon.length=80 --set levels.all=true --set sweep.flux.points=2"
+    command = f"{sys.executable} -m ribbon.cli study study.toml --quiet {options}"
+    with untouched(here):
+        done = subprocess.run(
+            ["bash", "-c", f"ulimit -f 500; {command} --set 'control.compare=[]'"],
+            env={**os.environ, "PYTHONPATH": os.pathsep.join(sys.path)},
+            capture_output=True,
+            text=True,
+            timeout=60,
+            check=False,
+        )
+        refused((done.returncode, done.stdout, done.stderr), "cannot be written")
 
 
 def test_the_shelf_is_not_touched_by_a_lattice_path(here, capsys):
