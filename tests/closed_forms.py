@@ -9,6 +9,7 @@ formulas are proved against brute-force matrices in ``test_closed_forms.py``).
 from __future__ import annotations
 
 import math
+from functools import lru_cache
 
 import numpy as np
 from scipy.optimize import brentq
@@ -191,7 +192,8 @@ def zigzag_by_blocks(
     return take_half(levels)
 
 
-def transverse_roots(rows: int, g: float) -> tuple[list[float], float | None]:
+@lru_cache(maxsize=4096)
+def transverse_roots(rows: int, g: float) -> tuple[tuple[float, ...], float | None]:
     """Roots 0 < p < pi of sin(pN) + g sin(p(N + 1)) = 0, and eta of the edge state if there is one.
 
     The edge state (p = pi + i eta for g > 0, i eta for g < 0) obeys sinh(eta N) = |g| sinh(eta
@@ -203,11 +205,11 @@ def transverse_roots(rows: int, g: float) -> tuple[list[float], float | None]:
 
     grid = np.linspace(0, math.pi, 200 * (rows + 1) + 1)[1:-1]
     values = [condition(p) for p in grid]
-    roots = [
+    roots = tuple(
         float(brentq(condition, a, b, xtol=1e-15, rtol=1e-14))
         for a, b, u, v in zip(grid, grid[1:], values, values[1:], strict=False)
         if u == 0 or u * v < 0  # a root may sit exactly on the grid
-    ]
+    )
     if not 0 < abs(g) < rows / (rows + 1):
         return roots, None
 

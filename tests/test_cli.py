@@ -12,6 +12,7 @@ import signal
 import subprocess
 import sys
 from collections.abc import Callable
+from dataclasses import replace
 from importlib.metadata import version
 from pathlib import Path
 from typing import Any
@@ -19,6 +20,7 @@ from typing import Any
 import numpy as np
 import pytest
 from scipy import constants
+from scipy.io import mmread
 from typer.main import get_command
 
 from ribbon.cli import app, main
@@ -230,6 +232,12 @@ def test_study_prints_its_checks_and_where_the_report_is(run, here):
     assert all(line.startswith("pass  ") for line in checks)
 
 
+def test_a_band_filled_to_the_brim_is_studied_too(run, here):
+    """With one electron a site and one a level there is no empty level, and still a report."""
+    options = ["--set", "sweep.spin=1", "--set", "control.compare=[]", "--quiet"]
+    assert run("study", "ring.toml", *options) == (0, "ring-study/report.html\n", "")
+
+
 def test_a_study_folder_reruns_by_itself(run, here):
     """The folder holds the lattice file and site table it needs."""
     (here / "own.toml").write_text(shelf()["square"].read_text())
@@ -256,7 +264,46 @@ def test_new_writes_a_file_that_can_be_described(run, here, name):
     assert json.loads(out)["boundary_loops"] == 1
 
 
+def test_export_writes_the_matrix_that_others_can_read(run, here):
+    """The exported matrix, read back by scipy, has the levels of the closed form."""
+    assert run("export", "ring.toml", "ring.mtx") == (0, "", "ring.mtx is written\n")
+    levels = np.linalg.eigvalsh(mmread(here / "ring.mtx").toarray())
+    np.testing.assert_allclose(levels, annulene(0.0), rtol=0, atol=1e-9)
+
+
+def test_notes_go_to_stderr(run):
+    """What a reader should know beside the table is not in the table."""
+    size = ["--set", "ribbon.length_nm=16.2"]
+    status, out, err = run("levels", "ring.toml", *size)
+    assert status == 0
+    assert out.startswith("level,energy")
+    assert err.startswith("note: length_nm = 16.2: ")
+    told = json.loads(run("describe", "ring.toml", "--json", *size)[1])
+    assert told["notes"] == [err.removeprefix("note: ").strip()]
+
+
 # exit statuses
+
+
+def test_totals_that_do_not_fit_are_refused_where_they_were_asked_for(run, here, monkeypatch):
+    """Without totals the table of levels is still given, but --totals cannot be."""
+    import ribbon.study.run as study_run  # noqa: PLC0415
+
+    whole = study_run.run_flux
+
+    def bare(*args: Any, **kwargs: Any) -> Any:
+        result = whole(*args, **kwargs)
+        response = replace(result.ribbon.response, totals=None)
+        case = replace(result.ribbon, response=response)
+        return replace(result, cases=(case,), notes=("totals are left out: too large",))
+
+    monkeypatch.setattr(study_run, "run_flux", bare)
+    status, out, err = run("flux", "ring.toml", "--totals", "totals.csv")
+    assert (status, out, err) == (2, "", "ribbon: totals are left out: too large\n")
+    assert not (here / "totals.csv").exists()
+    told = json.loads(run("flux", "ring.toml", "--json")[1])
+    assert told["totals"] is None
+    assert len(told["flux"]) == 5 * 16
 
 
 def test_an_answer_in_doubt_is_written_and_gets_status_3(run, here, monkeypatch):
@@ -266,8 +313,6 @@ def test_an_answer_in_doubt_is_written_and_gets_status_3(run, here, monkeypatch)
     whole = study_run.run_levels
 
     def doubtful(*args: Any, **kwargs: Any) -> Any:
-        from dataclasses import replace  # noqa: PLC0415
-
         result = whole(*args, **kwargs)
         failed = replace(result.checks[0], passed=False, value=2.0, limit=1.0)
         return replace(result, checks=(failed, *result.checks[1:]))

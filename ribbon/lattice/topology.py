@@ -14,7 +14,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 from scipy.sparse import coo_array, csr_array
-from scipy.sparse.csgraph import connected_components, maximum_bipartite_matching
+from scipy.sparse.csgraph import connected_components, maximum_flow
 
 from ribbon.lattice.network import Bonds, Network
 from ribbon.lattice.ring import Ring, reseam
@@ -134,11 +134,19 @@ def _balance(colours: NDArray[np.bool_] | None) -> tuple[int, int] | None:
 def _unmatched(n: int, bonds: Bonds, colours: NDArray[np.bool_] | None) -> int | None:
     if colours is None:
         return None
+    # a maximum matching is a maximum flow of units from a source through one colour class to
+    # the other and on to a sink
+    source, sink = n, n + 1
     forward = colours[bonds.tail]
-    left = np.where(forward, bonds.tail, bonds.head)
-    right = np.where(forward, bonds.head, bonds.tail)
-    matched = maximum_bipartite_matching(_graph(n, left, right), perm_type="column")
-    return int(n - 2 * np.count_nonzero(matched >= 0))
+    one, other = np.flatnonzero(colours), np.flatnonzero(~colours)
+    tail = [np.where(forward, bonds.tail, bonds.head), np.full(one.size, source), other]
+    head = [np.where(forward, bonds.head, bonds.tail), one, np.full(other.size, sink)]
+    ends = (np.concatenate(tail), np.concatenate(head))
+    capacity = coo_array((np.ones(ends[0].size, dtype=np.int32), ends), shape=(n + 2, n + 2))
+    capacity = capacity.tocsr()
+    capacity.data[:] = 1  # a bond that stands twice still carries one unit
+    matched = maximum_flow(capacity, source, sink, method="dinic").flow_value
+    return int(n - 2 * matched)
 
 
 def _graph(n: int, tail: IntArray, head: IntArray) -> csr_array:

@@ -6,29 +6,18 @@ that a slip of the keyboard is refused in words before memory is asked for.
 
 from __future__ import annotations
 
-import itertools
-from collections.abc import Iterable
-from typing import Annotated, Any, ClassVar, Literal
+from typing import Annotated, Any, Literal
 
-from pydantic import (
-    BaseModel,
-    BeforeValidator,
-    ConfigDict,
-    Discriminator,
-    Field,
-    GetJsonSchemaHandler,
-    Tag,
-    model_validator,
-)
-from pydantic.json_schema import JsonSchemaValue
-from pydantic_core import CoreSchema, PydanticCustomError
+from pydantic import BeforeValidator, ConfigDict, Discriminator, Field, Tag, model_validator
+from pydantic_core import PydanticCustomError
+
+from ribbon.study.key_table import KeyTable, chosen, sentence_error
 
 __all__ = [
     "Continuum",
     "Control",
     "Disorder",
     "Hopping",
-    "KeyTable",
     "Levels",
     "MagneticField",
     "Ribbon",
@@ -40,6 +29,8 @@ __all__ = [
 Unit = Literal["eV", "meV", "t", "beta", "THz", "GHz", "MHz"]
 
 LARGEST_ENERGY = 1e12
+LARGEST_FLUX = 1000
+"""Everything has period one in flux; far out the phases would only lose digits."""
 LARGEST_SEED = 2**63 - 1
 DEFAULT_SHELLS: dict[str, list[float]] = {"eV": [2.7], "t": [1.0], "beta": [1.0]}
 """Amplitudes where none are given: graphene's in eV, 1 where the unit is the amplitude itself."""
@@ -47,72 +38,6 @@ DEFAULT_SHELLS: dict[str, list[float]] = {"eV": [2.7], "t": [1.0], "beta": [1.0]
 Energy = Annotated[float, Field(ge=-LARGEST_ENERGY, le=LARGEST_ENERGY)]
 Positive = Annotated[float, Field(gt=0, le=LARGEST_ENERGY)]
 Text = Annotated[str, Field(min_length=1, max_length=1000, pattern=r"^[^\x00-\x1f\x7f]*$")]
-
-
-def sentence_error(sentence: str) -> PydanticCustomError:
-    """Return a problem that is already said in a whole sentence."""
-    return PydanticCustomError("sentence", "{sentence}", {"sentence": sentence})
-
-
-def _given(data: dict[str, Any], keys: Iterable[str]) -> list[str]:
-    """Keys that choose something; ``all = false`` chooses nothing, a number 0 does."""
-    return [key for key in keys if data.get(key) is not None and data[key] is not False]
-
-
-class KeyTable(BaseModel):
-    """What all tables share: nothing unknown, nothing converted, nothing infinite.
-
-    ``exclusive`` lists groups of keys of which one at most may be given.
-    """
-
-    model_config = ConfigDict(
-        frozen=True,
-        extra="forbid",
-        strict=True,
-        allow_inf_nan=False,
-        validate_default=False,
-        use_attribute_docstrings=True,
-    )
-    exclusive: ClassVar[tuple[tuple[str, ...], ...]] = ()
-    schema_rules: ClassVar[tuple[dict[str, Any], ...]] = ()
-
-    @model_validator(mode="before")
-    @classmethod
-    def _complete(cls, data: Any) -> Any:
-        """Refuse keys that exclude each other, then fill in defaults that hang on other keys."""
-        if not isinstance(data, dict):
-            return data
-        for group in cls.exclusive:
-            both = _given(data, group)
-            if len(both) > 1:
-                raise PydanticCustomError("exclusive", "keys exclude each other", {"keys": both})
-        return cls.completed(dict(data))
-
-    @classmethod
-    def completed(cls, data: dict[str, Any]) -> dict[str, Any]:
-        """Return the table with the defaults that depend on other keys of it."""
-        return data
-
-    @classmethod
-    def __get_pydantic_json_schema__(
-        cls, core_schema: CoreSchema, handler: GetJsonSchemaHandler
-    ) -> JsonSchemaValue:
-        """Say in the JSON schema too which keys may not stand together, and which must."""
-        schema = handler.resolve_ref_schema(handler(core_schema))
-        pairs = (pair for group in cls.exclusive for pair in itertools.combinations(group, 2))
-        rules = [cls._rule(pair) for pair in pairs]
-        if rules or cls.schema_rules:
-            schema["allOf"] = [*rules, *cls.schema_rules]
-        return schema
-
-    @classmethod
-    def _rule(cls, pair: tuple[str, str]) -> dict[str, Any]:
-        """Two keys may not stand together; a switch counts only when it is on."""
-        rule: dict[str, Any] = {"required": list(pair)}
-        switches = [key for key in pair if cls.model_fields[key].annotation is bool]
-        if switches:
-            rule["properties"] = {key: {"const": True} for key in switches}
-        return {"not": rule}
 
 
 class Ribbon(KeyTable):
@@ -221,7 +146,7 @@ class Hopping(KeyTable):
 class MagneticField(KeyTable):
     """The flux through the ring, and how it is written on the bonds."""
 
-    flux: Annotated[float, Field(ge=-1e6, le=1e6)] = 0.0
+    flux: Annotated[float, Field(ge=-LARGEST_FLUX, le=LARGEST_FLUX)] = 0.0
     """flux quanta h/e through the ring"""
     gauge: Literal["uniform", "seam"] = "uniform"
     """where the phases stand: "uniform" along the ring, or on the "seam" alone"""
@@ -230,7 +155,7 @@ class MagneticField(KeyTable):
 class Disorder(KeyTable):
     """Random site energies and missing sites, drawn from a seed."""
 
-    strength: Annotated[float, Field(ge=0, le=LARGEST_ENERGY)] = 0.0
+    strength: Annotated[float, Field(ge=0, lt=LARGEST_ENERGY)] = 0.0
     """full width of the uniform distribution of site energies, in the unit"""
     vacancies: Annotated[float, Field(ge=0, lt=1)] = 0.0
     """fraction of sites taken out, rounded to a count"""
@@ -257,7 +182,7 @@ class Levels(KeyTable):
     @classmethod
     def completed(cls, data: dict[str, Any]) -> dict[str, Any]:
         """Count 40 levels unless another choice is made."""
-        if not _given(data, ("count", "all", "between")):
+        if not chosen(data, ("count", "all", "between")):
             data["count"] = 40
         return data
 
@@ -281,9 +206,9 @@ class SweepFlux(KeyTable):
 
     model_config = ConfigDict(serialize_by_alias=True)
 
-    from_: Annotated[float, Field(alias="from", ge=-1e6, le=1e6)] = 0.0
+    from_: Annotated[float, Field(alias="from", ge=-LARGEST_FLUX, le=LARGEST_FLUX)] = 0.0
     """first flux, in flux quanta"""
-    to: Annotated[float, Field(ge=-1e6, le=1e6)] = 1.0
+    to: Annotated[float, Field(ge=-LARGEST_FLUX, le=LARGEST_FLUX)] = 1.0
     """last flux"""
     points: Annotated[int, Field(ge=2, le=100_001)] = 101
     """how many fluxes"""
@@ -330,7 +255,7 @@ class Sweep(KeyTable):
     @classmethod
     def completed(cls, data: dict[str, Any]) -> dict[str, Any]:
         """Fill neutrally unless a number or a chemical potential is given."""
-        if not _given(data, ("electrons", "chemical_potential")):
+        if not chosen(data, ("electrons", "chemical_potential")):
             data["electrons"] = data.get("electrons", "neutral")
         return data
 

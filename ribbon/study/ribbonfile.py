@@ -13,17 +13,16 @@ from typing import Annotated, Any
 from pydantic import BaseModel, Field, PrivateAttr, ValidationError, model_validator
 
 from ribbon.errors import BadInput
+from ribbon.study.key_table import KeyTable, sentence_error
 from ribbon.study.keys import (
     Continuum,
     Control,
     Disorder,
     Hopping,
-    KeyTable,
     Levels,
     MagneticField,
     Ribbon,
     Sweep,
-    sentence_error,
 )
 from ribbon.study.sentences import one_line, sentence_of
 from ribbon.study.site_table import read_site_table

@@ -25,6 +25,8 @@ ADVICE = {
     ("disorder.vacancies", "less_than"): "; it is a fraction of the sites",
     ("hopping.shells", "too_long"): "; first, second and third neighbours at most",
     ("levels.count", "less_than_equal"): "; levels.all = true asks for the whole spectrum",
+    ("field.flux", "less_than_equal"): "; levels have period one in flux",
+    ("field.flux", "greater_than_equal"): "; levels have period one in flux",
     ("sweep.spin", "literal_error"): ", the electrons that a level holds",
 }
 """What to add to the sentence about one kind of problem with one key."""
@@ -108,8 +110,8 @@ def _said(error: ErrorDetails, model: type[BaseModel]) -> str:
     if kind == "sentence":
         return str(context["sentence"])
     if kind == "exclusive":
-        keys = " and ".join(f"{path}.{key}" for key in context["keys"])
-        return f"{keys} exclude each other; keep one of them"
+        *others, last = (f"{path}.{key}" for key in context["keys"])
+        return f"{', '.join(others)} and {last} exclude each other; keep one of them"
     if kind == "extra_forbidden":
         return _unknown(path, model)
     advice = ADVICE.get((path, kind), "")

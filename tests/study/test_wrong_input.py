@@ -167,7 +167,10 @@ VALUES = [
     ),
     said("flux nan", ribbon(field="flux = nan"), "field.flux = nan must be a finite number"),
     said(
-        "flux huge", ribbon(field="flux = -1e300"), "field.flux = -1e+300 must be -1000000 or more"
+        "flux huge",
+        ribbon(field="flux = -1e300"),
+        "field.flux = -1e+300 must be -1000 or more",
+        "period one",
     ),
     said(
         "negative strength",
@@ -215,6 +218,11 @@ EXCLUSIVE = [
     ),
     said(
         "count, between", ribbon(levels="count = 3\nbetween = [0, 1]"), "count and levels.between"
+    ),
+    said(
+        "count, all and between",
+        ribbon(levels="count = 3\nall = true\nbetween = [0, 1]"),
+        "levels.count, levels.all and levels.between exclude each other",
     ),
     said("all, between", ribbon(levels="all = true\nbetween = [0, 1]"), "all and levels.between"),
     said(
