@@ -25,5 +25,6 @@ class NotCertified(RibbonError):
     exit_status = 3
 
     def __init__(self, sentence: str, partial: object = None) -> None:
+        """Keep the sentence and what is known."""
         super().__init__(sentence)
         self.partial = partial

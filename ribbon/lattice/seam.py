@@ -12,6 +12,8 @@ from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
+from scipy.sparse import coo_array
+from scipy.sparse.csgraph import connected_components
 from scipy.spatial import cKDTree
 
 from ribbon.errors import BadInput
@@ -155,11 +157,26 @@ def closing_sizes(
         except BadInput:
             continue
         shift = tried_length * strip.lattice.period
-        if cell_map(strip.cell, -shift, flip=flip) is not None:
+        closes = cell_map(strip.cell, -shift, flip=flip) is not None
+        if closes and _holds_together(strip):
             found.append((tried_rows, tried_length))
             if len(found) == count:
                 break
     return found
+
+
+def _holds_together(strip: Strip) -> bool:
+    """False where first neighbours join nothing along the strip (armchair, one row)."""
+    cell, periods = strip.cell, 3
+    x = (cell.x + cell.period * np.arange(periods)[:, None]).ravel()
+    points = np.column_stack([x, np.tile(cell.y - cell.y.min(), periods)])
+    # a box that repeats along the strip and is empty beside it
+    box = (periods * cell.period, 10.0 + 2 * float(points[:, 1].max()))
+    pairs = cKDTree(points, boxsize=box).query_pairs(
+        strip.lattice.shells[0] + 2e3 * TOLERANCE, output_type="ndarray"
+    )
+    joined = coo_array((np.ones(len(pairs)), tuple(pairs.T)), shape=(len(points),) * 2)
+    return int(connected_components(joined, directed=False)[0]) == 1
 
 
 def _near(rows: int, length: float) -> Iterator[tuple[int, float]]:
@@ -183,10 +200,14 @@ def _refusal(strip: Strip, half_twists: int) -> str:
         f"a {lattice.name} strip of ribbon.rows = {strip.rows} and ribbon.length = "
         f"{strip.length:g} does not close with half_twists = {half_twists}"
     )
+    return f"{what}; {_sizes(near)}"
+
+
+def _sizes(near: list[tuple[int, float]]) -> str:
     if not near:
-        return f"{what}, nor does any size near it: this lattice has no mirror across the strip"
+        return "nor does any size near it: this lattice has no mirror across the strip"
     sizes = ", ".join(f"rows = {r} with length = {n:g}" for r, n in near)
-    return f"{what}; the nearest sizes that close are {sizes}"
+    return f"the nearest sizes that close are {sizes}"
 
 
 def fit_strip(
@@ -222,9 +243,12 @@ def fit_strip(
         if (rows is None or r == rows) and (not keep_length or n == length)
     ]
     if not candidates:
+        near = closing_sizes(
+            unit.lattice, rows=wanted_rows, length=max(wanted_length, 0.5), half_twists=half_twists
+        )
         raise BadInput(
             f"no {unit.lattice.name} ribbon near rows = {wanted_rows} and length = "
-            f"{wanted_length:g} closes with half_twists = {half_twists}"
+            f"{wanted_length:g} closes with half_twists = {half_twists}; {_sizes(near)}"
         )
     step = unit.lattice.repeat[1] / len(unit.lattice.lines) * unit.lattice.lines_per_row
     return min(

@@ -132,6 +132,8 @@ def lay_strip(
         raise BadInput(f"ribbon.length = {length} must be a positive number of lattice periods")
     if not (np.isfinite(distance) and distance > 0):
         raise BadInput(f"ribbon.spacing = {distance} must be a positive length in nm")
+    if abs(2 * length - round(2 * length)) < 2 * TOLERANCE:
+        length = round(2 * length) / 2  # a length written with too few or too many digits
     per_line = max(len(line.x) for line in definition.lines)
     if rows * definition.lines_per_row * length * per_line > LARGEST_STRIP:
         raise BadInput(

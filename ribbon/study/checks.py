@@ -200,7 +200,7 @@ def _miscounted(hamiltonian: Hamiltonian, levels: Levels) -> int:
     """How far inertia counts just outside the window are from the indices of its levels."""
     matrix = hamiltonian.matrix(levels.flux, gauge="seam")
     order = find_order(matrix)
-    step = 10 * tolerance(hamiltonian)
+    step = tolerance(hamiltonian) / 2  # the next level is at least a whole tolerance away
     below = count_negative(matrix, float(levels.energies[0]) - step, order).below
     upto = count_negative(matrix, float(levels.energies[-1]) + step, order).below
     return abs(below - int(levels.index[0])) + abs(upto - int(levels.index[-1]) - 1)

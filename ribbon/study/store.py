@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import io
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -16,11 +17,16 @@ __all__ = ["case_dataset", "write_results"]
 
 
 def write_results(result: StudyResult, path: Path) -> None:
-    """Write every case into a group of its own name in one NetCDF file."""
+    """Write every case into a group of its own name in one NetCDF file.
+
+    The file is made in memory first: HDF5 takes the process down when a disk fills up under it.
+    """
+    stream = io.BytesIO()
     for number, case in enumerate(result.cases):
         data = case_dataset(case)
         data.attrs["title"] = result.title
-        data.to_netcdf(path, mode="a" if number else "w", group=case.name, engine="h5netcdf")
+        data.to_netcdf(stream, mode="a" if number else "w", group=case.name, engine="h5netcdf")
+    path.write_bytes(stream.getvalue())
 
 
 def case_dataset(case: Case) -> xr.Dataset:

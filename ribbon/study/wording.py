@@ -56,6 +56,8 @@ def gap_text(gap: Gap, unit: str) -> str:
     """The gap in words: its size, or that the shell is open."""
     if gap.open_shell:
         return "open shell, no gap"
+    if np.isnan(gap.gap):
+        return _brim(gap)
     return f"gap {quantity(gap.gap, unit)}"
 
 
@@ -94,7 +96,7 @@ def facts(result: StudyResult) -> tuple[Fact, ...]:
     case, unit = result.ribbon, result.ribbon.levels.unit
     found = [Fact("Gap", _gap_size(case.gap, unit), f"{_filling(case)}, flux {case.flux:g} h/e")]
     control = result.nearest_control
-    if control is not None:
+    if control is not None and not np.isnan(case.gap.gap - control.gap.gap):
         change = quantity(case.gap.gap - control.gap.gap, unit)
         signed = change if change.startswith(("−", "0 ")) else f"+{change}"
         beside = _gap_size(control.gap, unit)
@@ -146,7 +148,14 @@ def _energy(value: float, case: Case) -> str:
 
 
 def _gap_size(gap: Gap, unit: str) -> str:
+    if np.isnan(gap.gap):
+        return _brim(gap)
     return "none" if gap.open_shell else quantity(gap.gap, unit)
+
+
+def _brim(gap: Gap) -> str:
+    """What stands in place of a gap where the levels are all full or all empty."""
+    return "all levels full" if np.isnan(gap.upper) else "all levels empty"
 
 
 def _twists(count: int) -> str:
@@ -227,6 +236,8 @@ def _gap_sentence(result: StudyResult) -> str:
             f"With {_filling(case)} the last shell at {_energy(case.gap.lower, case)} "
             "is only partly filled: there is no gap."
         )
+    if np.isnan(case.gap.gap):
+        return f"With {_filling(case)} there is no gap to speak of: {_brim(case.gap)}."
     return (
         f"With {_filling(case)} the highest filled level lies "
         f"{quantity(case.gap.gap, case.levels.unit)} below the lowest empty one."
@@ -236,6 +247,8 @@ def _gap_sentence(result: StudyResult) -> str:
 def _control_sentence(case: Case, control: Case) -> str:
     change = case.gap.gap - control.gap.gap
     unit = case.levels.unit
+    if np.isnan(change):
+        return f"The {control.label} has {_control_gap(control, unit)}."
     start = f"The {control.label} has {_control_gap(control, unit)}"
     if abs(change) <= 1e-9 * max(case.hamiltonian.scale, 1e-300):
         return f"{start}, the same as the ribbon."
@@ -244,6 +257,8 @@ def _control_sentence(case: Case, control: Case) -> str:
 
 
 def _control_gap(case: Case, unit: str) -> str:
+    if np.isnan(case.gap.gap):
+        return f"no gap to speak of ({_brim(case.gap)})"
     return (
         "an open shell and no gap"
         if case.gap.open_shell
@@ -256,7 +271,8 @@ def _sign_sentence(result: StudyResult) -> str:
     assert case.other_gap is not None
     own = f'"{result.file.ribbon.orbital}"'
     gap = case.other_gap
-    other = "no gap" if gap.open_shell else f"a gap of {_gap_size(gap, case.levels.unit)}"
+    none = gap.open_shell or np.isnan(gap.gap)
+    other = "no gap" if none else f"a gap of {_gap_size(gap, case.levels.unit)}"
     return (
         f"All this holds for orbitals of the kind {own}; with the other sign under the flip the "
         f"same ribbon has {other}."

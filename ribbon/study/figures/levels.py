@@ -51,7 +51,8 @@ MARKED = 26
 def level_window(case: Case, *, most: int = 36) -> tuple[float, float]:
     """Energies between which the ``most`` levels nearest to the gap lie, with some room."""
     energies = np.asarray(case.levels.energies)
-    middle = (case.gap.lower + case.gap.upper) / 2
+    # a band that is full or empty has one frontier level only, the other is NaN
+    middle = float(np.nanmean([case.gap.lower, case.gap.upper]))
     if energies.size == 0:
         return middle - 1.0, middle + 1.0
     reach = np.sort(np.abs(energies - middle))[: max(most, 2)][-1]
