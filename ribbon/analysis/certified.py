@@ -17,6 +17,7 @@ from ribbon.hopping import Hamiltonian
 __all__ = ["Edge", "bracket", "counted_edge", "edge_with_count", "window"]
 
 MOST_LEVELS = 4_000
+MOST_BYTES = 2 * 1024**3
 SLICE = 150
 MOST_SPARE = 20
 
@@ -71,6 +72,11 @@ def window(
         raise TooLarge(
             f"the window holds {wanted:,} levels; more than {MOST_LEVELS:,} take a narrower "
             "window, or levels.all on a ring small enough for it"
+        )
+    if wanted * hamiltonian.n * 16 > MOST_BYTES:
+        raise TooLarge(
+            f"the states of {wanted:,} levels on {hamiltonian.n:,} sites take more than "
+            f"{MOST_BYTES / 1024**3:.0f} GiB; ask for a narrower window"
         )
     matrix = hamiltonian.matrix(flux, gauge="seam")
     pieces = [

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import os
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Literal
 
@@ -28,6 +27,7 @@ from ribbon.lattice import (
     remove_sites,
     reseam,
 )
+from ribbon.study.forecast import available_bytes
 from ribbon.study.result import CaseName
 from ribbon.study.site_table import read_site_table
 
@@ -330,17 +330,10 @@ def _check_pieces(ring: Ring) -> None:
 
 def _check_memory(sites: int) -> None:
     need = sites * BYTES_PER_SITE
-    have = _available_bytes()
+    have = available_bytes()
     if need > 0.8 * have:
         raise TooLarge(
             f"{sites:,} sites need about {need / 1024**3:.1f} GiB to build, and "
             f"{have / 1024**3:.1f} GiB are free here; fewer ribbon.rows or a shorter "
             f"ribbon.length with at most {int(0.8 * have / BYTES_PER_SITE):,} sites would fit"
         )
-
-
-def _available_bytes() -> int:
-    try:
-        return int(os.sysconf("SC_AVPHYS_PAGES") * os.sysconf("SC_PAGE_SIZE"))
-    except (AttributeError, OSError, ValueError):  # not every system tells
-        return 8 * 1024**3

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import os
 from dataclasses import dataclass
 
 import numpy as np
@@ -9,9 +10,18 @@ import numpy as np
 from ribbon.analysis import Window
 from ribbon.analysis.exact import blocks_of, dense_bytes, fits_dense
 from ribbon.analysis.levels import FloatArray
+from ribbon.errors import TooLarge
 from ribbon.hopping import Hamiltonian
 
-__all__ = ["Forecast", "forecast_levels", "forecast_sweep"]
+__all__ = [
+    "MOST_KEPT",
+    "Forecast",
+    "available_bytes",
+    "forecast_levels",
+    "forecast_sweep",
+    "levels_wanted",
+    "refuse_if_too_large",
+]
 
 # seconds on one core of 2020s hardware, measured with the benchmark of this project
 DENSE_STATES = 4.0e-10
@@ -19,6 +29,12 @@ DENSE_VALUES = 1.5e-10
 BLOCK = 2.0e-9
 BLOCK_BASE = 2.0e-6
 SPARSE_SITE = 1.0e-4
+BYTES_PER_ROW = 400
+"""Of a level at one flux: arrays, tables and their text."""
+MOST_KEPT = 256 * 1024**2
+"""States are kept up to this size; levels alone beyond it."""
+SHARE = 0.8
+"""Part of the free memory that a job may take."""
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -37,17 +53,43 @@ class Forecast:
         return f"{max(1, round(self.bytes / 1024**2))} MiB"
 
 
+def available_bytes() -> int:
+    """Memory that is free on this machine; 8 GiB where the system does not tell."""
+    try:
+        return int(os.sysconf("SC_AVPHYS_PAGES") * os.sysconf("SC_PAGE_SIZE"))
+    except (AttributeError, OSError, ValueError):
+        return 8 * 1024**3
+
+
+def levels_wanted(hamiltonian: Hamiltonian, window: Window) -> int:
+    """How many levels a window holds at most."""
+    if window.all or window.between is not None:
+        return hamiltonian.n
+    return min(window.count, hamiltonian.n)
+
+
+def refuse_if_too_large(expected: Forecast, what: str, advice: str) -> None:
+    """Raise `TooLarge` where the memory forecast exceeds what is free."""
+    have = available_bytes()
+    if expected.bytes > SHARE * have:
+        raise TooLarge(
+            f"{what} would take about {expected.memory}, and {have / 1024**3:.1f} GiB are free "
+            f"here; {advice}"
+        )
+
+
 def forecast_levels(hamiltonian: Hamiltonian, window: Window, flux: float) -> Forecast:
     """Expected cost of one window of levels."""
     n = hamiltonian.n
     blocks = blocks_of(hamiltonian)
     if blocks is not None:
+        kept = 16 * n * min(levels_wanted(hamiltonian, window), MOST_KEPT // (16 * n))
         seconds = sum(
             s.momenta.size * (BLOCK_BASE + BLOCK * s.size**3) + 1e-7 * s.size**2 * s.momenta.size
             for s in blocks.sectors
         )
         store = sum(16 * 4 * s.momenta.size * s.size**2 for s in blocks.sectors)
-        return Forecast(method="symmetry", seconds=seconds, bytes=store)
+        return Forecast(method="symmetry", seconds=seconds, bytes=store + 2 * kept)
     if window.all and fits_dense(hamiltonian, flux, states=True):
         return _dense(n, DENSE_STATES)
     if n <= 600:
@@ -64,7 +106,10 @@ def forecast_sweep(hamiltonian: Hamiltonian, fluxes: FloatArray, window: Window)
         one = _dense(hamiltonian.n, DENSE_STATES)
         reduced = np.abs(fluxes - np.rint(fluxes)).round(12)
         points = np.unique(reduced).size
-    return Forecast(method=one.method, seconds=one.seconds * points, bytes=one.bytes)
+    rows = fluxes.size * levels_wanted(hamiltonian, window)
+    return Forecast(
+        method=one.method, seconds=one.seconds * points, bytes=one.bytes + BYTES_PER_ROW * rows
+    )
 
 
 def _dense(n: int, cost: float) -> Forecast:

@@ -30,7 +30,14 @@ from ribbon.hopping import Hamiltonian, assemble
 from ribbon.lattice import certify_topology, reseam
 from ribbon.study.build import Model, Plan, build, build_controls
 from ribbon.study.checks import GENERIC_FLUX, check_levels, check_ring, check_structure
-from ribbon.study.forecast import Forecast, forecast_sweep
+from ribbon.study.forecast import (
+    MOST_KEPT,
+    Forecast,
+    forecast_levels,
+    forecast_sweep,
+    levels_wanted,
+    refuse_if_too_large,
+)
 from ribbon.study.result import Case, Check, StudyResult
 
 if TYPE_CHECKING:
@@ -42,7 +49,7 @@ Progress = Callable[..., None]
 """Called with the name of a stage and, where known, the fraction of it that is done."""
 
 SLOW_SWEEP = 120.0
-"""A control whose sweep is forecast to take longer (seconds) is left without one."""
+"""A double cover whose sweep is forecast to take longer (seconds) is left without one."""
 
 
 def run_study(file: RibbonFile, *, progress: Progress | None = None) -> StudyResult:
@@ -105,6 +112,8 @@ def _run(
         progress("checks")
         checks = tuple(_checks(plan, cases[0], scope))
     notes += _remarks(plan, cases[0])
+    if scope == "levels":
+        notes.append(_gaps(cases[0]))
     return StudyResult(
         title=file.heading,
         file=file,
@@ -121,8 +130,14 @@ def _levels_case(plan: Plan, model: Model) -> Case:
     hamiltonian = model.hamiltonian
     on_ring = hamiltonian.ring is not None
     flux = plan.file.field.flux * model.flux_scale if on_ring else 0.0
+    window = plan.window_for(model)
+    refuse_if_too_large(
+        forecast_levels(hamiltonian, window, flux),
+        f"the spectrum of the {model.label} ({hamiltonian.n:,} sites)",
+        "a smaller ribbon, or on a disordered one a smaller levels.count, would fit",
+    )
     with _threads(hamiltonian):
-        levels = _with_states(hamiltonian, plan.window_for(model), flux)
+        levels = _with_states(hamiltonian, window, flux)
         electrons = _electron_number(plan, model, flux)
         gap = find_gap(hamiltonian, electrons=electrons, spin=plan.filling.spin, flux=flux)
         other = _other_gap(plan, model, electrons, flux)
@@ -143,8 +158,9 @@ def _levels_case(plan: Plan, model: Model) -> Case:
 
 
 def _with_states(hamiltonian: Hamiltonian, window: Any, flux: float) -> Levels:
-    """Levels with states, unless all states of a large ring would be asked for."""
-    states = not window.all or hamiltonian.n <= 4000
+    """Levels, with their states where these fit into a file one would like to keep."""
+    wanted = levels_wanted(hamiltonian, window)
+    states = hamiltonian.n * wanted * 16 <= MOST_KEPT
     found: Levels = window.find(hamiltonian, flux=flux, states=states)
     return found
 
@@ -176,8 +192,13 @@ def _with_sweep(plan: Plan, model: Model, case: Case, progress: Progress) -> tup
     """Add the flux response, its harmonics and the half-quantum test to a case."""
     fluxes = plan.fluxes * model.flux_scale
     expected = forecast_sweep(model.hamiltonian, fluxes, plan.window_for(model))
-    if model.name != "ribbon" and expected.seconds > SLOW_SWEEP:
+    if model.name == "double" and expected.seconds > SLOW_SWEEP:
         return case, [_left_out(model, expected)]
+    refuse_if_too_large(
+        expected,
+        f"the flux sweep of the {model.label} ({fluxes.size:,} fluxes)",
+        "fewer sweep.flux.points or a narrower levels window would fit",
+    )
     stage = f"flux sweep of the {model.label}"
     if expected.seconds > 1:
         progress(f"{stage}: about {expected.seconds:.0f} s, {expected.memory}")
@@ -251,6 +272,19 @@ def _remarks(plan: Plan, case: Case) -> list[str]:
             "electrons at every flux; this is not the canonical ensemble"
         )
     return notes
+
+
+def _gaps(case: Case) -> str:
+    """The gap in a line, with that of the other orbital sign where there is one."""
+    unit = case.levels.unit
+
+    def size(gap: Gap) -> str:
+        return "none (open shell)" if gap.open_shell else f"{gap.gap:.9g} {unit}"
+
+    ring = case.hamiltonian.ring
+    own = "" if ring is None or case.other_gap is None else f' with orbital "{ring.orbital}"'
+    other = "" if case.other_gap is None else f", with the other sign {size(case.other_gap)}"
+    return f"gap at {case.electrons:g} electrons{own}: {size(case.gap)}{other}"
 
 
 def _provenance(file: RibbonFile) -> dict[str, Any]:

@@ -182,7 +182,10 @@ def test_species_decide_whether_a_ring_closes_and_sublattices_do_not() -> None:
 @pytest.mark.parametrize("lattice", brute.LATTICES)
 @pytest.mark.parametrize("half_twists", [0, 1])
 def test_sizes_that_close(lattice: str, half_twists: int) -> None:
-    """Every size named closes, the same number of rows comes first, and none nearer is left out."""
+    """Every size named closes, nearest first, and none nearer is left out.
+
+    Armchair strips of one row close but fall into dimers: they are not offered.
+    """
     for rows, length in itertools.product((2, 3, 4), (4, 4.5)):
         found = closing_sizes(lattice, rows=rows, length=length, half_twists=half_twists, count=5)
         assert len(found) == len(set(found)) == 5
@@ -192,11 +195,11 @@ def test_sizes_that_close(lattice: str, half_twists: int) -> None:
             return 2 * abs(size[0] - here[0]) + abs(size[1] - here[1])
 
         assert [away(size) for size in found] == sorted(away(size) for size in found)
-        near = itertools.product(range(1, 9), (3.5, 4.0, 4.5, 5.0))
+        lowest = 2 if lattice == "honeycomb-armchair" else 1
+        near = itertools.product(range(lowest, 9), (3.5, 4.0, 4.5, 5.0))
         left_out = {size for size in near if closes(lattice, *size, half_twists)} - set(found)
-        assert min(map(away, left_out)) >= away(found[-1]) - 1e-9 or lattice == "lieb"
-        closing = closes(lattice, rows, length, half_twists)
-        assert (found[0] == (rows, length)) == closing
+        assert min(map(away, left_out)) >= away(found[-1])
+        assert (found[0] == (rows, length)) == closes(lattice, rows, length, half_twists)
 
 
 @pytest.mark.parametrize(
@@ -298,9 +301,7 @@ def test_bonds_lead_from_tail_to_head(case: Case) -> None:
 def test_bonds_with_the_seam_further_on(case: Case, seam: int) -> None:
     """Moved sites stand at their image beyond the far end, and displacements follow."""
     slices = len({round(x, 6) for x, _ in brute.ring_sites(*case[:3])})
-    if seam > slices:
-        seam = slices
-    ring = ring_of_case(case, seam=seam)
+    ring = ring_of_case(case, seam=min(seam, slices))
     bonds = ring.bonds
     image = ring.positions[bonds.head].copy()
     image[case.half_twists * bonds.winding % 2 == 1, 1] *= -1

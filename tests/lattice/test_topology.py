@@ -362,7 +362,7 @@ def test_a_network_in_space_has_no_plane() -> None:
 
 
 def test_a_site_bonded_to_itself_counts_two() -> None:
-    """A column of three sites closed on itself: middle 4, outer 3; three loops spoil two colours."""
+    """A column of three sites closed on itself: middle 4, outer 3; loops spoil two colours."""
     found = certify_topology(ring_of_case(Case("square", 3, 1, 0)))
     assert found.coordination == {3: 2, 4: 1}
     assert not found.bipartite
@@ -393,9 +393,7 @@ def test_open_strips_are_discs(lattice: str) -> None:
 # --- vacancies and lost bonds --------------------------------------------------------------------
 
 
-@given(
-    case=st.sampled_from(LARGE), seed=st.integers(0, 2**32 - 1), fraction=st.floats(0.02, 0.5)
-)
+@given(case=st.sampled_from(LARGE), seed=st.integers(0, 2**32 - 1), fraction=st.floats(0.02, 0.5))
 def test_rings_with_vacancies_against_networkx(case: Case, seed: int, fraction: float) -> None:
     """Graph facts of any remainder; faces are those cycles of the whole ring that are left."""
     whole = ring_of_case(case)
