@@ -33,7 +33,7 @@ from ribbon.analysis.filling import fill
 from ribbon.errors import BadInput
 from ribbon.hopping import Hopping, assemble
 from ribbon.hopping.units import boltzmann
-from ribbon.lattice import close_strip, lay_strip
+from ribbon.lattice import lay_strip, open_strip
 
 Build = Callable[..., Any]
 LEVEL = 1e-9
@@ -269,7 +269,7 @@ def test_low_temperatures_meet_zero_temperature(kelvin: float, ring_of: Build) -
 @pytest.mark.xfail(
     strict=True, reason="inside a gap the number is flat to rounding: mu is anywhere"
 )
-@pytest.mark.parametrize("kelvin", [1.0, 30.0])
+@pytest.mark.parametrize("kelvin", [1.0, 5.0])
 def test_the_chemical_potential_of_a_cold_gapped_ring(kelvin: float, ring_of: Build) -> None:
     """Electrons above the gap = holes below it; mu -> middle + (kT/2) ln(g_below/g_above).
 
@@ -465,11 +465,8 @@ def test_fluxes_that_make_no_sense(fluxes: list[float], hamiltonian_of: Build) -
         sweep_flux(hamiltonian_of(Case("square", 2, 5, 1)), fluxes)
 
 
-def test_a_molecule_has_no_flux_to_sweep() -> None:
+def test_an_open_strip_has_no_flux_to_sweep() -> None:
     """The sentence says that a ring is needed."""
-    strip = lay_strip("square", rows=2, length=4)
-    assert close_strip(strip, half_twists=0).n == 8
-    from ribbon.lattice import open_strip  # noqa: PLC0415  # only here
-
+    strip = open_strip(lay_strip("square", rows=2, length=4))
     with pytest.raises(BadInput, match="a threading flux needs a ring"):
-        sweep_flux(assemble(open_strip(strip), Hopping()), [0.1])
+        sweep_flux(assemble(strip, Hopping()), [0.1])
