@@ -279,7 +279,9 @@ def test_notes_go_to_stderr(run):
     assert out.startswith("level,energy")
     assert err.startswith("note: length_nm = 16.2: ")
     told = json.loads(run("describe", "ring.toml", "--json", *size)[1])
-    assert told["notes"] == [err.removeprefix("note: ").strip()]
+    size_note, gap_note = (line.removeprefix("note: ") for line in err.splitlines())
+    assert told["notes"] == [size_note]
+    assert gap_note.startswith("gap at 16 electrons")
 
 
 # exit statuses

@@ -319,6 +319,27 @@ def test_totals_at_finite_temperature(case: Case, spin: int, ring_of: Build) -> 
     assert math.isclose(totals.electrons[0], number, abs_tol=LEVEL)
 
 
+@pytest.mark.parametrize("case", RINGS[:6])
+def test_totals_at_fixed_chemical_potential_and_zero_temperature(
+    case: Case, hamiltonian_of: Build
+) -> None:
+    """Omega = sum of spin (E - mu) over the levels below mu, and its slope by differences."""
+    energies = disorder(case, 1.0)
+    mu, flux = -0.413, 0.29
+
+    def omega(at: float) -> float:
+        levels = case.levels(at, energies=energies)
+        return 2 * float((levels[levels < mu] - mu).sum())
+
+    filling = Filling(electrons=None, chemical_potential=mu, spin=2)
+    totals = sweep_flux(hamiltonian_of(case, energies), np.array([flux]), filling=filling).totals
+    assert math.isclose(totals.energy[0], omega(flux), abs_tol=LEVEL)
+    assert math.isclose(totals.slope[0], derivative(omega, flux), abs_tol=1e-5)
+    below = np.count_nonzero(case.levels(flux, energies=energies) < mu)
+    assert totals.electrons[0] == 2 * below
+    assert not totals.shared[0]
+
+
 def test_ring_current_of_benzene() -> None:
     """t = 2.7 eV, a = 1.397 A: 11.25 nA/T, diatropic (Hückel-London theory; computed).
 
