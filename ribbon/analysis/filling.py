@@ -260,9 +260,18 @@ def _solve_potential(energies: FloatArray, levels: float, thermal: float) -> flo
             "number at a temperature above zero"
         )
     spread = 60 * thermal + thermal * np.log(energies.size + 1)
+    whole = int(levels)
+    low, high = energies[:whole], energies[whole:]
+    rest = np.log(levels - whole) if levels > whole else -np.inf
 
     def excess(potential: float) -> float:
-        return float(expit((potential - energies) / thermal).sum()) - levels
+        # electrons above the filling against holes below it, by logarithms: inside a gap both
+        # are too small to show in a sum of occupations
+        electrons = np.logaddexp.reduce(-np.logaddexp(0.0, (high - potential) / thermal))
+        holes = np.logaddexp.reduce(
+            -np.logaddexp(0.0, (potential - low) / thermal), initial=-np.inf
+        )
+        return float(electrons - np.logaddexp(holes, rest))
 
     return float(
         brentq(excess, energies[0] - spread, energies[-1] + spread, xtol=1e-15, rtol=1e-14)

@@ -10,7 +10,7 @@ from ribbon.lattice.ring import (
     remove_sites,
     reseam,
 )
-from ribbon.lattice.seam import Seam, closing_sizes, fit_strip
+from ribbon.lattice.seam import Seam, closing_sizes, fit_strip, holds_together
 from ribbon.lattice.strip import Strip, lay_strip
 from ribbon.lattice.topology import Topology, certify_topology
 
@@ -28,6 +28,7 @@ __all__ = [
     "closing_sizes",
     "double_cover",
     "fit_strip",
+    "holds_together",
     "lay_strip",
     "open_strip",
     "read_lattice",

@@ -20,7 +20,16 @@ from ribbon.errors import BadInput
 from ribbon.lattice.definition import TOLERANCE, Lattice
 from ribbon.lattice.strip import Cell, IntArray, Strip, frozen, lay_strip
 
-__all__ = ["Orbital", "Seam", "cell_map", "closing_sizes", "fit_strip", "fold", "make_seam"]
+__all__ = [
+    "Orbital",
+    "Seam",
+    "cell_map",
+    "closing_sizes",
+    "fit_strip",
+    "fold",
+    "holds_together",
+    "make_seam",
+]
 
 Orbital = Literal["s", "pz"]
 
@@ -158,22 +167,22 @@ def closing_sizes(
             continue
         shift = tried_length * strip.lattice.period
         closes = cell_map(strip.cell, -shift, flip=flip) is not None
-        if closes and _holds_together(strip):
+        if closes and holds_together(strip):
             found.append((tried_rows, tried_length))
             if len(found) == count:
                 break
     return found
 
 
-def _holds_together(strip: Strip) -> bool:
-    """False where first neighbours join nothing along the strip (armchair, one row)."""
+def holds_together(strip: Strip, shells: int = 1) -> bool:
+    """False where neighbours join nothing along the strip (armchair, one row, first shell)."""
     cell, periods = strip.cell, 3
     x = (cell.x + cell.period * np.arange(periods)[:, None]).ravel()
     points = np.column_stack([x, np.tile(cell.y - cell.y.min(), periods)])
     # a box that repeats along the strip and is empty beside it
     box = (periods * cell.period, 10.0 + 2 * float(points[:, 1].max()))
     pairs = cKDTree(points, boxsize=box).query_pairs(
-        strip.lattice.shells[0] + 2e3 * TOLERANCE, output_type="ndarray"
+        strip.lattice.shells[shells - 1] + 2e3 * TOLERANCE, output_type="ndarray"
     )
     joined = coo_array((np.ones(len(pairs)), tuple(pairs.T)), shape=(len(points),) * 2)
     return int(connected_components(joined, directed=False)[0]) == 1

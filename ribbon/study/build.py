@@ -21,6 +21,7 @@ from ribbon.lattice import (
     close_strip,
     double_cover,
     fit_strip,
+    holds_together,
     lay_strip,
     open_strip,
     read_lattice,
@@ -196,7 +197,10 @@ def _neighbours(plan: Plan) -> tuple[list[Model], list[str]]:
         strip = lay_strip(
             ring.strip.lattice, rows=ring.strip.rows, length=length, spacing=ring.strip.spacing
         )
-        near = close_strip(strip, half_twists=0, shells=ring.shells)
+        try:
+            near = close_strip(strip, half_twists=0, shells=ring.shells)
+        except BadInput:
+            continue
         values = energies[: strip.n]
         near = remove_sites(near, np.flatnonzero(np.isnan(values)))
         models.append(
@@ -206,11 +210,13 @@ def _neighbours(plan: Plan) -> tuple[list[Model], list[str]]:
                 hamiltonian=on_network(hamiltonian, near, values[~np.isnan(values)]),
             )
         )
-    note = (
-        f"no plain ring of length {ring.strip.length:g} exists; its neighbours, half a period "
-        "shorter and longer, stand in its place beside the double cover"
-    )
-    return models, [note]
+    missing = f"no plain ring of length {ring.strip.length:g} exists"
+    if not models:
+        return [], [f"{missing}, nor one half a period shorter or longer"]
+    return models, [
+        f"{missing}; its neighbours, half a period shorter and longer, stand in its place beside "
+        "the double cover"
+    ]
 
 
 def _double(plan: Plan) -> tuple[list[Model], list[str]]:
@@ -318,14 +324,16 @@ def _window(file: RibbonFile) -> Window:
 
 def _check_pieces(ring: Ring) -> None:
     """Refuse a ring whose complete strip already falls into pieces (armchair, one row)."""
+    if holds_together(ring.strip, ring.shells):
+        return
     bonds = ring.bonds
     graph = coo_array((np.ones(bonds.m), (bonds.tail, bonds.head)), shape=(ring.n, ring.n))
     pieces, _ = connected_components(graph, directed=False)
-    if pieces > 1:
-        raise BadInput(
-            f"ribbon.rows = {ring.strip.rows} of {ring.strip.lattice.name} falls into {pieces} "
-            f"detached pieces; rows = {ring.strip.rows + 1} or more hold together"
-        )
+    what = f"falls into {pieces} detached pieces" if pieces > 1 else "has no bond round the ring"
+    raise BadInput(
+        f"ribbon.rows = {ring.strip.rows} of {ring.strip.lattice.name} {what}; "
+        f"rows = {ring.strip.rows + 1} or more hold together"
+    )
 
 
 def _check_memory(sites: int) -> None:

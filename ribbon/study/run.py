@@ -9,6 +9,7 @@ from contextlib import contextmanager
 from dataclasses import replace
 from datetime import UTC, datetime
 from importlib import metadata
+from math import isnan
 from typing import TYPE_CHECKING, Any
 
 from threadpoolctl import threadpool_limits
@@ -279,6 +280,8 @@ def _gaps(case: Case) -> str:
     unit = case.levels.unit
 
     def size(gap: Gap) -> str:
+        if isnan(gap.gap):
+            return "none (all levels full)" if isnan(gap.upper) else "none (all levels empty)"
         return "none (open shell)" if gap.open_shell else f"{gap.gap:.9g} {unit}"
 
     ring = case.hamiltonian.ring

@@ -323,7 +323,6 @@ def test_a_strip_that_falls_apart_is_refused() -> None:
         build(file_of("honeycomb-armchair", 1, 4))
 
 
-@pytest.mark.xfail(strict=True, reason="one dimer alone is one piece")
 def test_a_single_dimer_is_no_ribbon_either() -> None:
     """Armchair, one row, one period: no bond leads round the ring."""
     with pytest.raises(BadInput, match="rows = 2 or more"):
@@ -357,7 +356,6 @@ def test_systems_that_do_not_tell_their_memory(
     assert available_bytes() == 8 * 1024**3
 
 
-@pytest.mark.xfail(strict=True, raises=BadInput, reason="the control's refusal ends the study")
 def test_a_neighbour_that_does_not_close_is_left_out(tmp_path: Path) -> None:
     """A lattice file whose period is twice the true one: lengths of a quarter close one-sided.
 

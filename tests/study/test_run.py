@@ -285,7 +285,6 @@ def test_full_and_empty_bands_make_a_report(brim: str) -> None:
     assert not re.search(r"\bnan\b", re.sub(r"<[^>]*>", " ", page), re.IGNORECASE)
 
 
-@pytest.mark.xfail(strict=True, reason="the note of `levels` prints the NaN")
 def test_levels_of_a_full_band_say_no_number() -> None:
     """The gap in a line."""
     result = run_levels(file_of(Case("square", 2, 5, 1, -1), sweep={"spin": 1}))
