@@ -11,7 +11,7 @@ from ribbon.analysis.counting import Count, Order, count_negative, find_order
 from ribbon.analysis.exact import finish
 from ribbon.analysis.levels import Certificate, Levels, tolerance
 from ribbon.analysis.window import Found, levels_of_window, nearest_levels
-from ribbon.errors import TooLarge
+from ribbon.errors import NotCertified, TooLarge
 from ribbon.hopping import Hamiltonian
 
 __all__ = ["Edge", "bracket", "counted_edge", "edge_with_count", "window"]
@@ -65,7 +65,8 @@ def window(
 ) -> Levels:
     """Levels between two counted edges; wide windows are sliced at counted energies.
 
-    ``guess`` holds states that were found already and need not be found again.
+    ``guess`` holds states that were found already and need not be found again. Raises
+    `NotCertified` with the levels found so far as ``partial``.
     """
     wanted = upper.below - lower.below
     if wanted > MOST_LEVELS:
@@ -79,16 +80,23 @@ def window(
             f"{MOST_BYTES / 1024**3:.0f} GiB; ask for a narrower window"
         )
     matrix = hamiltonian.matrix(flux, gauge="seam")
-    pieces = [
-        levels_of_window(
-            matrix,
-            (low.energy, high.energy),
-            high.below - low.below,
-            scale=hamiltonian.scale,
-            guess=guess,
-        )
-        for low, high in _slices(hamiltonian, lower, upper, flux)
-    ]
+    doubt: NotCertified | None = None
+    pieces = []
+    for low, high in _slices(hamiltonian, lower, upper, flux):
+        try:
+            pieces.append(
+                levels_of_window(
+                    matrix,
+                    (low.energy, high.energy),
+                    high.below - low.below,
+                    scale=hamiltonian.scale,
+                    guess=guess,
+                )
+            )
+        except NotCertified as problem:
+            doubt = problem
+            if isinstance(problem.partial, Found):
+                pieces.append(problem.partial)
     energies = np.concatenate([piece.energies for piece in pieces])
     found = np.concatenate([piece.states for piece in pieces], axis=1)
     certificate = Certificate(
@@ -102,6 +110,8 @@ def window(
     )
     index = lower.below + np.arange(energies.size)
     levels = finish(hamiltonian, flux, energies, index, certificate, found)
+    if doubt is not None:
+        raise NotCertified(str(doubt), partial=levels)
     return levels if states else replace(levels, states=None)
 
 

@@ -214,6 +214,9 @@ def _occupy(
     if filling.temperature > 0:
         thermal = boltzmann(unit) * filling.temperature
         potential = filling.chemical_potential
+        if number is not None and number in {0.0, float(filling.spin * sites)}:
+            # nothing can move: any potential beyond the band does
+            return np.full(sites, number / sites), float("nan"), None
         if potential is None:
             assert number is not None
             potential = _solve_potential(energies, number / filling.spin, thermal)

@@ -77,6 +77,11 @@ class Lattice:
                 f"{self.repeat[1]:g} across: a cycle must be lower than its step"
             )
         found = _distances(self)
+        if abs(found[0] - 1) > 1e-3:
+            raise BadInput(
+                f"the nearest sites stand {found[0]:.6g} apart; lengths are in units of the "
+                "spacing, so this must be 1"
+            )
         if self.shells:
             _check_shells(self.shells, found)
         else:
@@ -249,8 +254,6 @@ def _distances(lattice: Lattice) -> list[float]:
     if np.count_nonzero(distance < TOLERANCE) > len(home):
         raise BadInput("two sites of the lattice stand on the same place")
     distance = distance[distance >= TOLERANCE]
-    if distance.size == 0:
-        raise BadInput("no two sites are near each other: lengths are in units of the spacing")
     first = np.concatenate([[True], np.diff(distance) > TOLERANCE])
     return [float(value) for value in distance[first]]
 

@@ -330,10 +330,13 @@ def _check_pieces(ring: Ring) -> None:
     graph = coo_array((np.ones(bonds.m), (bonds.tail, bonds.head)), shape=(ring.n, ring.n))
     pieces, _ = connected_components(graph, directed=False)
     what = f"falls into {pieces} detached pieces" if pieces > 1 else "has no bond round the ring"
-    raise BadInput(
-        f"ribbon.rows = {ring.strip.rows} of {ring.strip.lattice.name} {what}; "
-        f"rows = {ring.strip.rows + 1} or more hold together"
-    )
+    advice = "its first neighbours do not join along the strip"
+    for rows in range(ring.strip.rows + 1, ring.strip.rows + 5):
+        wider = lay_strip(ring.strip.lattice, rows=rows, length=1)
+        if holds_together(wider, ring.shells):
+            advice = f"rows = {rows} or more hold together"
+            break
+    raise BadInput(f"ribbon.rows = {ring.strip.rows} of {ring.strip.lattice.name} {what}; {advice}")
 
 
 def _check_memory(sites: int) -> None:

@@ -18,8 +18,9 @@ from ribbon.analysis import Levels, all_levels, levels_between, levels_near
 from ribbon.analysis.counting import count_negative, find_order
 from ribbon.analysis.exact import blocks_of
 from ribbon.analysis.levels import AnyArray, FloatArray, tolerance
+from ribbon.errors import NotCertified
 from ribbon.hopping import Hamiltonian, assemble
-from ribbon.lattice import Ring, Topology, double_cover, reseam
+from ribbon.lattice import Ring, Topology, certify_topology, double_cover, reseam
 from ribbon.lattice.seam import Orbital
 from ribbon.lattice.topology import coordination_numbers
 from ribbon.study.result import Check
@@ -35,28 +36,25 @@ PROBE_LEVELS = 12
 
 
 def check_structure(ring: Ring, topology: Topology) -> Iterator[Check]:
-    """Coordination as in the endless strip; loops and Euler characteristic of the closed band."""
-    if ring.kept is None:
-        degree = coordination_numbers(ring.n, ring.bonds)
-        wrong = int(np.count_nonzero(degree != _endless_degree(ring)))
-        yield _count("coordination", wrong, note="sites whose number of bonds differs")
-    whole = ring.kept is None and topology.euler_characteristic is not None
-    if whole and topology.components == 1:
-        loops = 1 if ring.flips else 2
-        off = abs((topology.boundary_loops or 0) - loops)
-        yield _count(
-            "boundary loops", off, note=f"{topology.boundary_loops} walked, {loops} expected"
-        )
-        chi = abs(topology.euler_characteristic or 0)
-        yield _count(
-            "Euler characteristic",
-            chi,
-            note=f"sites − bonds + faces = {topology.euler_characteristic}",
-        )
-        twist = int(topology.orientable == ring.flips)
-        yield _count(
-            "orientability", twist, note="orientable" if topology.orientable else "one-sided"
-        )
+    """Coordination as in the endless strip; loops and Euler characteristic of the closed band.
+
+    Of a ring with vacancies the same is asked with its sites put back.
+    """
+    if ring.kept is not None:
+        ring = reseam(ring, complete=True)
+        topology = certify_topology(ring)
+    degree = coordination_numbers(ring.n, ring.bonds)
+    wrong = int(np.count_nonzero(degree != _endless_degree(ring)))
+    yield _count("coordination", wrong, note="sites whose number of bonds differs")
+    if topology.euler_characteristic is None or topology.components > 1:
+        return
+    loops = 1 if ring.flips else 2
+    off = abs((topology.boundary_loops or 0) - loops)
+    yield _count("boundary loops", off, note=f"{topology.boundary_loops} walked, {loops} expected")
+    chi = topology.euler_characteristic
+    yield _count("Euler characteristic", abs(chi), note=f"sites − bonds + faces = {chi}")
+    side = "orientable" if topology.orientable else "one-sided"
+    yield _count("orientability", int(topology.orientable == ring.flips), note=side)
 
 
 def check_ring(hamiltonian: Hamiltonian, flux: float, *, near: float) -> Iterator[Check]:
@@ -69,7 +67,10 @@ def check_ring(hamiltonian: Hamiltonian, flux: float, *, near: float) -> Iterato
     yield check_gauge(hamiltonian, flux, dense=dense)
     yield check_period(hamiltonian, flux)
     yield from check_spectrum(hamiltonian, flux)
-    yield check_double_cover(hamiltonian, flux, near=near, dense=dense)
+    try:
+        yield check_double_cover(hamiltonian, flux, near=near, dense=dense)
+    except NotCertified as doubt:
+        yield _number("double cover", np.inf, 0.0, flux, note=str(doubt))
 
 
 def check_hermitian(hamiltonian: Hamiltonian, flux: float) -> Check:
@@ -187,6 +188,9 @@ def check_levels(hamiltonian: Hamiltonian, levels: Levels) -> Iterator[Check]:
         flux=levels.flux,
         note=f"{levels.m} levels from {certificate.lower:.6g} to {certificate.upper:.6g}",
     )
+    if levels.states is None and levels.residual is not None:
+        limit = 1e-9 * hamiltonian.scale
+        yield _number("largest residual", levels.residual, limit, levels.flux, note="as found")
     if levels.states is not None:
         turned = hamiltonian.matrix(levels.flux) @ levels.states
         residual = np.linalg.norm(turned - levels.states * levels.energies, axis=0)
@@ -201,8 +205,10 @@ def _miscounted(hamiltonian: Hamiltonian, levels: Levels) -> int:
     order = find_order(matrix)
     # the edge itself belongs to the window, and the next level is a whole tolerance away
     step = tolerance(hamiltonian) / 2
-    below = count_negative(matrix, certificate.lower - step, order).below
-    upto = count_negative(matrix, certificate.upper + step, order).below
+    lower = min(certificate.lower, *levels.energies[:1].tolist(), np.inf)
+    upper = max(certificate.upper, *levels.energies[-1:].tolist(), -np.inf)
+    below = count_negative(matrix, lower - step, order).below
+    upto = count_negative(matrix, upper + step, order).below
     off = abs(levels.m - (upto - below)) + abs(certificate.found - levels.m)
     if levels.m:
         off += abs(below - int(levels.index[0])) + abs(upto - int(levels.index[-1]) - 1)

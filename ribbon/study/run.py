@@ -26,7 +26,7 @@ from ribbon.analysis import (
     sweep_flux,
 )
 from ribbon.analysis.exact import blocks_of, fits_dense
-from ribbon.errors import BadInput
+from ribbon.errors import BadInput, NotCertified
 from ribbon.hopping import Hamiltonian, assemble
 from ribbon.lattice import certify_topology, reseam
 from ribbon.study.build import Model, Plan, build, build_controls
@@ -99,19 +99,29 @@ def _run(
         plan = build(file)
         models, control_notes = build_controls(plan) if controls else ((), ())
     notes = [*plan.notes, *control_notes]
-    cases = []
+    cases: list[Case] = []
+    failed: list[Check] = []
     for model in (plan.model, *models):
         with clock.stage(f"levels, {model.name}"):
             progress(f"levels of the {model.label}")
-            case = _levels_case(plan, model)
+            try:
+                case = _levels_case(plan, model)
+            except NotCertified as doubt:
+                if not cases:
+                    raise
+                failed.append(_doubtful(f"levels, {model.label}", doubt))
+                continue
         if sweep and model.hamiltonian.ring is not None:
             with clock.stage(f"flux, {model.name}"):
-                case, said = _with_sweep(plan, model, case, progress)
+                try:
+                    case, said = _with_sweep(plan, model, case, progress)
+                except NotCertified as doubt:
+                    said, failed = [], [*failed, _doubtful(f"flux sweep, {model.label}", doubt)]
                 notes += said
         cases.append(case)
     with clock.stage("checks"):
         progress("checks")
-        checks = tuple(_checks(plan, cases[0], scope))
+        checks = (*_checks(plan, cases[0], scope), *failed)
     notes += _remarks(plan, cases[0])
     if scope == "levels":
         notes.append(_gaps(cases[0]))
@@ -124,6 +134,11 @@ def _run(
         seconds=clock.seconds,
         provenance=_provenance(file),
     )
+
+
+def _doubtful(name: str, doubt: NotCertified) -> Check:
+    """A failed check in place of an answer that could not be certified."""
+    return Check(name=name, passed=False, value=float("inf"), limit=0.0, note=str(doubt))
 
 
 def _levels_case(plan: Plan, model: Model) -> Case:
@@ -162,7 +177,12 @@ def _with_states(hamiltonian: Hamiltonian, window: Any, flux: float) -> Levels:
     """Levels, with their states where these fit into a file one would like to keep."""
     wanted = levels_wanted(hamiltonian, window)
     states = hamiltonian.n * wanted * 16 <= MOST_KEPT
-    found: Levels = window.find(hamiltonian, flux=flux, states=states)
+    try:
+        found: Levels = window.find(hamiltonian, flux=flux, states=states)
+    except NotCertified as doubt:
+        if not isinstance(doubt.partial, Levels):
+            raise
+        return doubt.partial  # its certificate is incomplete, and the check of it fails
     return found
 
 

@@ -16,7 +16,7 @@ import brute
 import numpy as np
 import pytest
 from brute import PERIOD, Case, closes
-from hypothesis import given
+from hypothesis import given, settings
 from hypothesis import strategies as st
 
 from ribbon.errors import BadInput
@@ -229,6 +229,7 @@ def test_a_refusal_names_sizes_that_do_close(
         assert closes(lattice, int(row), float(long), half_twists)
 
 
+@settings(max_examples=10)
 @given(
     lattice=st.sampled_from(brute.LATTICES),
     half_twists=st.sampled_from([0, 1, 2]),

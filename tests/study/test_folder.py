@@ -255,13 +255,15 @@ def test_a_folder_runs_again_by_itself(made: Path, tmp_path: Path) -> None:
 
 
 @pytest.mark.usefixtures("plain_figures")
-def test_a_folder_can_be_replaced_by_a_run_of_its_own_input(made: Path, tmp_path: Path) -> None:
+def test_a_folder_can_be_replaced_by_a_run_of_its_own_input(
+    small: StudyResult, tmp_path: Path
+) -> None:
     """Reading from the folder that is being replaced: its files are copied before it goes."""
-    here = tmp_path / "study"
-    shutil.copytree(made, here)
+    here = write_folder(small, tmp_path / "study")
+    names = ("study.toml", "site-energies.csv", "lattice.toml")
+    before = [(here / name).read_bytes() for name in names]
     write_folder(run_study(read_study(here / "study.toml")), here, replace=True)
-    assert (here / "study.toml").read_bytes() == (made / "study.toml").read_bytes()
-    assert (here / "site-energies.csv").read_bytes() == (made / "site-energies.csv").read_bytes()
+    assert [(here / name).read_bytes() for name in names] == before
     assert [path.name for path in tmp_path.iterdir()] == ["study"]
 
 
