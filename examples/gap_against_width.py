@@ -4,17 +4,18 @@ Every third width is metallic as a plain ring; which sign of the orbital keeps i
 ring is one-sided is read off the last two columns. Half-odd lengths close even widths.
 """
 
+from typing import Literal
+
 import ribbon
 
 HOPPING = ribbon.Hopping(shells=(2.7,), unit="eV")
 LENGTH = 20.0
 
 
-def gap(rows: int, length: float, half_twists: int, orbital: str) -> float:
+def gap(rows: int, length: float, half_twists: int, orbital: Literal["s", "pz"]) -> float:
     """HOMO-LUMO gap of one neutral ring in eV."""
     strip = ribbon.lay_strip("honeycomb-armchair", rows=rows, length=length)
-    sign = "pz" if orbital == "pz" else "s"
-    ring = ribbon.close_strip(strip, half_twists=half_twists, orbital=sign)
+    ring = ribbon.close_strip(strip, half_twists=half_twists, orbital=orbital)
     return ribbon.find_gap(ribbon.assemble(ring, HOPPING)).gap
 
 
@@ -24,7 +25,7 @@ def main() -> None:
     for rows in range(3, 15):
         twisted = LENGTH if rows % 2 else LENGTH + 0.5
         plain = gap(rows, LENGTH, 0, "s")
-        even, odd = (gap(rows, twisted, 1, orbital) for orbital in ("s", "pz"))
+        even, odd = gap(rows, twisted, 1, "s"), gap(rows, twisted, 1, "pz")
         print(f"{rows},{twisted:g},{plain:.4f},{even:.4f},{odd:.4f}")
 
 

@@ -396,7 +396,7 @@ def shell(script: str, here: Path) -> subprocess.CompletedProcess[str]:
         env=environment,
         capture_output=True,
         text=True,
-        timeout=60,
+        timeout=180,
         check=False,
     )
 
@@ -444,7 +444,7 @@ def test_an_interrupt_ends_with_130_and_leaves_nothing(here):
         env={**os.environ, "PYTHONPATH": os.pathsep.join(sys.path)},
         capture_output=True,
         text=True,
-        timeout=60,
+        timeout=180,
         check=False,
     )
     assert done.returncode == 128 + signal.SIGINT
@@ -467,7 +467,7 @@ def test_help_loads_nothing_heavy(here):
         env={**os.environ, "PYTHONPATH": os.pathsep.join(sys.path)},
         capture_output=True,
         text=True,
-        timeout=60,
+        timeout=180,
         check=True,
     )
     assert done.stderr == "[]\n"

@@ -79,24 +79,9 @@ def window(
             f"the states of {wanted:,} levels on {hamiltonian.n:,} sites take more than "
             f"{MOST_BYTES / 1024**3:.0f} GiB; ask for a narrower window"
         )
-    matrix = hamiltonian.matrix(flux, gauge="seam")
-    doubt: NotCertified | None = None
-    pieces = []
-    for low, high in _slices(hamiltonian, lower, upper, flux):
-        try:
-            pieces.append(
-                levels_of_window(
-                    matrix,
-                    (low.energy, high.energy),
-                    high.below - low.below,
-                    scale=hamiltonian.scale,
-                    guess=guess,
-                )
-            )
-        except NotCertified as problem:
-            doubt = problem
-            if isinstance(problem.partial, Found):
-                pieces.append(problem.partial)
+    pieces, doubt = _solve_slices(
+        hamiltonian, _slices(hamiltonian, lower, upper, flux), flux, guess
+    )
     energies = np.concatenate([piece.energies for piece in pieces])
     found = np.concatenate([piece.states for piece in pieces], axis=1)
     certificate = Certificate(
@@ -113,6 +98,29 @@ def window(
     if doubt is not None:
         raise NotCertified(str(doubt), partial=levels)
     return levels if states else replace(levels, states=None)
+
+
+def _solve_slices(
+    hamiltonian: Hamiltonian,
+    slices: list[tuple[Edge, Edge]],
+    flux: float,
+    guess: Found | None,
+) -> tuple[list[Found], NotCertified | None]:
+    """Levels of every slice, and the last doubt where one could not be completed."""
+    matrix = hamiltonian.matrix(flux, gauge="seam")
+    pieces: list[Found] = []
+    doubt: NotCertified | None = None
+    for low, high in slices:
+        wanted = high.below - low.below
+        edges = (low.energy, high.energy)
+        try:
+            found = levels_of_window(matrix, edges, wanted, scale=hamiltonian.scale, guess=guess)
+        except NotCertified as problem:
+            if not isinstance(problem.partial, Found):
+                raise
+            doubt, found = problem, problem.partial
+        pieces.append(found)
+    return pieces, doubt
 
 
 def _slices(

@@ -15,13 +15,19 @@ from scipy.optimize import brentq
 from scipy.special import expit, xlogy
 
 from ribbon.analysis.exact import blocks_of, fits_dense
-from ribbon.analysis.levels import SAME, FloatArray, IntArray, Levels, shell_edges, tolerance
+from ribbon.analysis.levels import FloatArray, IntArray, Levels, shell_edges
 from ribbon.analysis.spectrum import all_levels, levels_at
 from ribbon.errors import BadInput
 from ribbon.hopping import Hamiltonian
 from ribbon.hopping.units import boltzmann
 
 __all__ = ["Filled", "Filling", "Gap", "fill", "find_gap", "occupations"]
+
+FINE = 1e-12
+"""Levels closer than this part of the spectrum are filled as one shell: rounding, no more.
+
+Finer than the shells of a window, so that edge states split by little are not shared out.
+"""
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -124,7 +130,7 @@ def find_gap(
         place = dict(zip(found.index.tolist(), found.energies.tolist(), strict=True))
         lower, upper = place[highest], place[lowest]
     gap = max(upper - lower, 0.0)
-    open_shell = gap <= tolerance(hamiltonian)
+    open_shell = gap <= FINE * hamiltonian.scale
     return Gap(
         lower=lower,
         upper=upper,
@@ -221,7 +227,7 @@ def _occupy(
             assert number is not None
             potential = _solve_potential(energies, number / filling.spin, thermal)
         return filling.spin * expit((potential - energies) / thermal), potential, None
-    same = SAME * scale
+    same = FINE * scale
     if number is None:
         assert filling.chemical_potential is not None
         return _below(energies, filling.chemical_potential, filling.spin, same)

@@ -9,7 +9,7 @@ import typer
 
 from ribbon.commands.answer import load
 from ribbon.commands.options import File, Quiet, Set
-from ribbon.commands.output import check_target, note, write_texts
+from ribbon.commands.output import check_target, guard_inputs, note, write_texts
 from ribbon.errors import BadInput
 
 __all__ = ["export", "new"]
@@ -50,6 +50,7 @@ def export(
     """
     check_target(path, not_over=file)
     ribbon_file = load(file, overrides)
+    guard_inputs(ribbon_file, path)
     from ribbon.study.export import export as write_export  # noqa: PLC0415
 
     write_export(ribbon_file, path)

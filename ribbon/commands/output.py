@@ -7,15 +7,19 @@ import os
 import sys
 from collections.abc import Mapping
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from ribbon.errors import BadInput
 from ribbon.study.whole import write_whole
+
+if TYPE_CHECKING:
+    from ribbon.study.ribbonfile import RibbonFile
 
 __all__ = [
     "ReaderGoneError",
     "check_target",
     "emit",
+    "guard_inputs",
     "hush_stdout",
     "json_text",
     "note",
@@ -107,6 +111,16 @@ def check_target(path: Path | None, *, not_over: Path | None = None) -> None:
         raise BadInput(f"{path}: the folder {parent} cannot be written to")
     if not_over is not None and path.exists() and path.samefile(not_over):
         raise BadInput(f"{path}: is the ribbon file itself; give another name")
+
+
+def guard_inputs(file: RibbonFile, *targets: Path | None) -> None:
+    """Refuse to write over the lattice file or site table that a ribbon file reads."""
+    lattice = file.lattice_path_or_name
+    named = [lattice if isinstance(lattice, Path) else None, file.site_table_path]
+    read = [source for source in named if source is not None and source.exists()]
+    for target in targets:
+        if target is not None and target.exists() and any(map(target.samefile, read)):
+            raise BadInput(f"{target}: is read by the ribbon file; give another name")
 
 
 def write_texts(texts: Mapping[Path, str]) -> None:

@@ -9,7 +9,7 @@ import typer
 
 from ribbon.commands.answer import deliver, heading, judge, known, load, trust
 from ribbon.commands.options import AsJson, File, Quiet, Set
-from ribbon.commands.output import check_target
+from ribbon.commands.output import check_target, guard_inputs
 from ribbon.commands.progress import Progress
 from ribbon.errors import BadInput, TooLarge
 
@@ -31,6 +31,7 @@ def levels(
     """Print the levels that the file asks for (CSV)."""
     check_target(out, not_over=file)
     ribbon_file = load(file, overrides)
+    guard_inputs(ribbon_file, out)
     from ribbon.study.run import run_levels  # noqa: PLC0415
     from ribbon.study.tables import levels_table  # noqa: PLC0415
 
@@ -70,6 +71,7 @@ def flux(
     check_target(out, not_over=file)
     check_target(totals, not_over=file)
     ribbon_file = load(file, overrides)
+    guard_inputs(ribbon_file, out, totals)
     from ribbon.hopping.units import current_factor  # noqa: PLC0415
     from ribbon.study.run import run_flux  # noqa: PLC0415
     from ribbon.study.tables import flux_table, totals_table  # noqa: PLC0415

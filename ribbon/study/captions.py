@@ -47,7 +47,7 @@ def _ribbon(result: StudyResult) -> Caption:
     degrees = ", ".join(f"{n:,} with {d}" for d, n in sorted(topology.coordination.items()))
     return Caption(
         "The ribbon, laid flat",
-        f"{subtitle(result)}. The ends are glued so that A meets A and B meets B: {glued}. The "
+        f"{subtitle(result)}. The ends are glued so that P meets P and Q meets Q: {glued}. The "
         "band spans the hard walls; dotted bonds cross the seam. Sites by number of bonds: "
         f"{degrees}.",
         f"Drawing of the flat ribbon with {topology.sites:,} sites and {topology.bonds:,} bonds; "

@@ -36,7 +36,16 @@ def quantity(value: float, unit: str, digits: int = 4) -> str:
     '3.92 meV'
     """
     factor, label = scaled(abs(value), unit)
-    return f"{number(value * factor, digits)} {label}"
+    return f"{number(value * factor, digits)} {shown_unit(label)}"
+
+
+def shown_unit(unit: str) -> str:
+    """The unit as it is shown: energies are in |β|, whose own sign is negative.
+
+    >>> shown_unit("beta per flux quantum"), shown_unit("eV")
+    ('|β| per flux quantum', 'eV')
+    """
+    return unit.replace("beta", "|β|")
 
 
 def scaled(largest: float, unit: str) -> tuple[float, str]:
@@ -62,8 +71,8 @@ def axis_unit(largest: float, unit: str) -> tuple[float, str]:
     factor, label = scaled(largest, unit)
     if label == unit and largest > 0 and not 1e-3 <= largest < 1e5:
         power = math.floor(math.log10(largest))
-        return float(f"1e{-power}"), f"10{_raised(power)} {unit}"
-    return factor, label
+        return float(f"1e{-power}"), f"10{_raised(power)} {shown_unit(unit)}"
+    return factor, shown_unit(label)
 
 
 def _raised(power: int) -> str:

@@ -29,8 +29,9 @@ from ribbon.analysis.exact import blocks_of, fits_dense
 from ribbon.errors import BadInput, NotCertified
 from ribbon.hopping import Hamiltonian, assemble
 from ribbon.lattice import certify_topology, reseam
-from ribbon.study.build import Model, Plan, build, build_controls
+from ribbon.study.build import Model, Plan, build
 from ribbon.study.checks import GENERIC_FLUX, check_levels, check_ring, check_structure
+from ribbon.study.controls import build_controls
 from ribbon.study.forecast import (
     MOST_KEPT,
     Forecast,
@@ -204,9 +205,11 @@ def _other_gap(plan: Plan, model: Model, electrons: float, flux: float) -> Gap |
     other = reseam(ring, orbital="s" if ring.orbital == "pz" else "pz")
     energies = model.hamiltonian.site_energies
     hopping = replace(model.hamiltonian.hopping, site_energy=energies, disorder=0.0)
-    return find_gap(
-        assemble(other, hopping), electrons=electrons, spin=plan.filling.spin, flux=flux
-    )
+    partner = assemble(other, hopping)
+    potential = plan.filling.chemical_potential
+    if potential is not None:  # the reservoir sets the level, not the number
+        electrons = float(plan.filling.spin * count_below(partner, potential, flux=flux))
+    return find_gap(partner, electrons=electrons, spin=plan.filling.spin, flux=flux)
 
 
 def _with_sweep(plan: Plan, model: Model, case: Case, progress: Progress) -> tuple[Case, list[str]]:
@@ -287,6 +290,13 @@ def _remarks(plan: Plan, case: Case) -> list[str]:
         notes.append(f"the vacancies leave {case.topology.components} detached pieces")
     if case.response is not None and case.harmonics is None and case.response.totals is not None:
         notes.append("no harmonics: the sweep does not cover whole flux quanta in equal steps")
+    if case.levels.m == 0:
+        edges = case.levels.certificate
+        notes.append(f"the window from {edges.lower:g} to {edges.upper:g} holds no level")
+    if plan.ring.half_twists and not plan.ring.flips:
+        notes.append(
+            "an even number of half twists gives the levels of the plain ring in this flat model"
+        )
     if plan.filling.temperature > 0 and plan.filling.chemical_potential is None:
         notes.append(
             "at a temperature above 0 K the chemical potential is solved for the number of "

@@ -51,7 +51,7 @@ seed = 1  # the same seed draws the same sites and energies
 
 [levels]
 count = 40  # that many levels, nearest to `near`
-near = 0.0
+near = {near}
 # all = true  # instead of count: the whole spectrum
 # between = [-0.5, 0.5]  # instead of count: every level between two energies
 broadening = 0.02  # width of each level in the density of states, in the unit
@@ -69,6 +69,9 @@ refinements = 3  # meshes finer than this one, for the comparison with the conti
 [control]
 compare = ["plain", "double"]  # also "open"; plain: untwisted, double: twice as long
 """
+
+FLAT_AVOIDED = {"lieb": 1.0}
+"""Where a window shows something: the middle of the Lieb band is one flat shell."""
 
 
 def starter(lattice: str | Path = "honeycomb-zigzag", *, path: str | Path = "ribbon.toml") -> str:
@@ -95,6 +98,7 @@ def starter(lattice: str | Path = "honeycomb-zigzag", *, path: str | Path = "rib
         spacing=definition.spacing,
         unit=toml_value("eV" if carbon else "t"),
         hopping=2.7 if carbon else 1.0,
+        near=FLAT_AVOIDED.get(definition.name, 0.0),
     )
 
 

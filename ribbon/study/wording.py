@@ -30,7 +30,7 @@ __all__ = [
 ALIKE = 1e-6
 """Currents that differ by less than this part of the largest one repeat."""
 
-NOISE = 1e-11
+NOISE = 1e-13
 """A current or difference below this part of the largest hopping slope is rounding."""
 
 
@@ -108,7 +108,8 @@ def facts(result: StudyResult) -> tuple[Fact, ...]:
     peak = peak_current(case)
     if peak is not None:
         value = quantity(abs(peak.current), peak.unit)
-        found.append(Fact("Largest current", value, f"at {peak.flux:.4g} h/e"))
+        where = f"at {peak.flux:.4g} h/e" if peak.current else "at every flux of the sweep"
+        found.append(Fact("Largest current", value, where))
     if case.half is not None:
         found.append(_half_fact(case))
     found += [_edge_fact(case, result.file.ribbon.half_twists), _size_fact(case)]
@@ -190,6 +191,8 @@ def comparison(result: StudyResult) -> list[dict[str, str]]:
             row["largest current"] = (
                 ""
                 if peak is None
+                else "none"
+                if not peak.current
                 else f"{quantity(abs(peak.current), peak.unit)} at {peak.flux:.4g}"
             )
         rows.append(row)
@@ -250,7 +253,8 @@ def _control_sentence(case: Case, control: Case) -> str:
     if np.isnan(change):
         return f"The {control.label} has {_control_gap(control, unit)}."
     start = f"The {control.label} has {_control_gap(control, unit)}"
-    if abs(change) <= 1e-9 * max(case.hamiltonian.scale, 1e-300):
+    alike = case.gap.open_shell == control.gap.open_shell
+    if alike and abs(change) <= tolerance(case.hamiltonian):
         return f"{start}, the same as the ribbon."
     more = "larger" if change > 0 else "smaller"
     return f"{start}; the gap of the ribbon is {quantity(abs(change), unit)} {more}."
@@ -259,11 +263,8 @@ def _control_sentence(case: Case, control: Case) -> str:
 def _control_gap(case: Case, unit: str) -> str:
     if np.isnan(case.gap.gap):
         return f"no gap to speak of ({_brim(case.gap)})"
-    return (
-        "an open shell and no gap"
-        if case.gap.open_shell
-        else f"a gap of {_gap_size(case.gap, unit)}"
-    )
+    size = f"a gap of {_gap_size(case.gap, unit)}"
+    return "an open shell and no gap" if case.gap.open_shell else size
 
 
 def _sign_sentence(result: StudyResult) -> str:
@@ -283,7 +284,9 @@ def _current_sentences(result: StudyResult) -> list[str]:
     case = result.ribbon
     found = []
     peak = peak_current(case)
-    if peak is not None and case.response is not None:
+    if peak is not None and not peak.current:
+        found.append("The total current vanishes at every flux of the sweep.")
+    elif peak is not None and case.response is not None:
         others = [(c, peak_current(c)) for c in result.controls]
         beside = "; ".join(
             f"{quantity(abs(p.current), p.unit)} in the {c.label}" for c, p in others if p

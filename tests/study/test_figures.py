@@ -206,7 +206,7 @@ def case_of(network: Any) -> Any:
 
 def letters(figure: Figure) -> dict[str, list[tuple[float, float]]]:
     """Places of the letters at the two ends, left first."""
-    found: dict[str, list[tuple[float, float]]] = {"A": [], "B": []}
+    found: dict[str, list[tuple[float, float]]] = {"P": [], "Q": []}
     for text in texts(figure):
         if text.get_text() in found:
             found[text.get_text()].append(text.xy)  # type: ignore[attr-defined]
@@ -215,13 +215,13 @@ def letters(figure: Figure) -> dict[str, list[tuple[float, float]]]:
 
 @pytest.mark.parametrize(("twists", "flips"), [(0, False), (1, True), (2, False), (3, True)])
 def test_letters_show_which_edges_are_glued(twists: int, flips: bool):
-    """After an odd number of half twists A at the lower left meets A at the upper right."""
+    """After an odd number of half twists P at the lower left meets P at the upper right."""
     _, figure = drawn_ribbon("square", 3, 8, twists)
     place = letters(figure)
-    left, right = place["A"]
+    left, right = place["P"]
     assert left[0] < right[0]
     assert (left[1] * right[1] < 0) == flips
-    assert place["B"][0][1] == -left[1]
+    assert place["Q"][0][1] == -left[1]
     sentence = next(text for text in texts(figure) if "Glue" in text.get_text())
     assert ("not flipped" in sentence.get_text()) != flips
 
@@ -275,7 +275,7 @@ def test_a_long_ribbon_is_drawn_whole_and_at_its_ends():
     assert first.get_xlim()[1] < last.get_xlim()[0]
     assert "to scale" in whole.get_title(loc="left")
     assert len(to_svg(figure)) < 400_000
-    assert len(letters(figure)["A"]) == 2
+    assert len(letters(figure)["P"]) == 2
 
 
 def test_a_huge_ribbon_says_what_is_left_out():
@@ -306,7 +306,7 @@ def test_a_bare_network_has_no_seam():
     corners = np.column_stack([np.cos(np.arange(6) * np.pi / 3), np.sin(np.arange(6) * np.pi / 3)])
     benzene = Network.from_pairs([(i, (i + 1) % 6) for i in range(6)], positions=corners)
     figure = draw_ribbon(case_of(benzene))
-    assert letters(figure) == {"A": [], "B": []}
+    assert letters(figure) == {"P": [], "Q": []}
     assert not any("hard walls" in text.get_text() for text in texts(figure))
 
 

@@ -25,6 +25,7 @@ from ribbon.study.figures.look import (
     panel_title,
     styled,
 )
+from ribbon.study.wording import NOISE
 
 if TYPE_CHECKING:
     from ribbon.analysis import Totals
@@ -69,6 +70,8 @@ def draw_currents(cases: Sequence[Case]) -> Figure:
     unit = summed[0].levels.unit
     factor, label = current_factor(unit)
     largest = _largest(summed, factor)
+    if largest <= NOISE * abs(factor) * max(case.hamiltonian.scale for case in summed):
+        largest, factor = 1.0, 0.0  # rounding is drawn as the zero it is
     barred = [case for case in summed if case.harmonics is not None]
     with styled():
         figure = new_figure(FULL, 78)

@@ -112,12 +112,19 @@ def _height(window: tuple[float, float]) -> float:
 
 
 def _shade_gap(axes: Axes, case: Case, flux: FloatArray) -> None:
-    """Shade between the highest filled and the lowest empty level at every flux."""
+    """Shade between the highest filled and the lowest empty level at every flux.
+
+    At fixed chemical potential the number of electrons, and with it these levels, may change.
+    """
     response = case.response
     assert response is not None
+    moved = np.zeros(flux.size, dtype=np.int64)
+    if response.totals is not None:
+        added = np.asarray(response.totals.electrons) - case.electrons
+        moved = np.rint(added / case.spin).astype(np.int64)
     edges = []
     for index in (case.gap.lower_index, case.gap.upper_index):
-        found = np.where(response.level == index, response.energy, np.nan)
+        found = np.where(response.level == (index + moved)[:, None], response.energy, np.nan)
         known = np.isfinite(found)
         edges.append(np.where(known.any(axis=1), np.where(known, found, 0.0).sum(axis=1), np.nan))
     if case.gap.upper_index > case.gap.lower_index:

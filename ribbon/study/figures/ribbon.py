@@ -84,7 +84,7 @@ def draw_ribbon(case: Case) -> Figure:
         if sheet.closed:
             turn = "run against each other: flipped" if sheet.flips else "run alike: not flipped"
             figure.supxlabel(
-                f"Glue the ends so that A meets A and B meets B (the arrows {turn})",
+                f"Glue the ends so that P meets P and Q meets Q (the arrows {turn})",
                 x=0.012, ha="left", color=QUIET, fontsize=7.5,
             )  # fmt: skip
     return figure
@@ -257,7 +257,7 @@ def _draw_ends(axes: Axes, sheet: _Sheet, part: tuple[float, float], margin: flo
                 "shrinkA": 0, "shrinkB": 0,
             },
         )  # fmt: skip
-        for letter, height, colour in (("A", tail, START), ("B", tip, END)):
+        for letter, height, colour in (("P", tail, START), ("Q", tip, END)):
             upper = height > middle
             axes.annotate(
                 letter, (place, height), xytext=(0, 3 if upper else -3),
