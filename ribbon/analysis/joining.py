@@ -80,6 +80,7 @@ class Follower:
     """
 
     def __init__(self) -> None:
+        """Start with no branch."""
         self.states: AnyArray | None = None
         self.energies: FloatArray = np.zeros(0)
         self.slopes: FloatArray = np.zeros(0)

@@ -20,7 +20,8 @@ from brute import Case
 from ribbon.errors import BadInput, TooLarge
 from ribbon.lattice import shelf
 from ribbon.study import build as build_module
-from ribbon.study.build import build, build_controls
+from ribbon.study.build import build
+from ribbon.study.controls import build_controls
 from ribbon.study.forecast import available_bytes
 from ribbon.study.ribbonfile import RibbonFile, read_study
 
