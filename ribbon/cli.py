@@ -48,7 +48,7 @@ for verb in (study, describe, levels, flux, export, lattices, new):
 
 def _version(wanted: bool) -> None:
     if wanted:
-        from importlib.metadata import version  # noqa: PLC0415
+        from importlib.metadata import version
 
         emit(version("halftwist"))
         raise typer.Exit

@@ -19,7 +19,7 @@ __all__ = ["deliver", "heading", "judge", "known", "load", "trust"]
 
 def load(file: Path, overrides: Sequence[str] | None) -> RibbonFile:
     """Read the ribbon file of a command line."""
-    from ribbon.study.ribbonfile import read_study  # noqa: PLC0415
+    from ribbon.study.ribbonfile import read_study
 
     return read_study(file, overrides=overrides or ())
 

@@ -26,7 +26,7 @@ def new(
     quiet: Quiet = False,
 ) -> None:
     """Write a commented starter file."""
-    from ribbon.study.starter import starter  # noqa: PLC0415
+    from ribbon.study.starter import starter
 
     check_target(path)
     if path.exists():
@@ -51,7 +51,7 @@ def export(
     check_target(path, not_over=file)
     ribbon_file = load(file, overrides)
     guard_inputs(ribbon_file, path)
-    from ribbon.study.export import export as write_export  # noqa: PLC0415
+    from ribbon.study.export import export as write_export
 
     write_export(ribbon_file, path)
     note(f"{path} is written", quiet=quiet)

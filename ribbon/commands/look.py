@@ -20,7 +20,7 @@ def describe(
     Sites, bonds and topology, the sizes that close, the memory and time expected.
     """
     ribbon_file = load(file, overrides)
-    from ribbon.study.describe import describe as describe_file  # noqa: PLC0415
+    from ribbon.study.describe import describe as describe_file
 
     told = describe_file(ribbon_file)
     if as_json:
@@ -53,7 +53,7 @@ def _words(value: Any) -> str:
 
 def lattices() -> None:
     """List the lattices on the shelf."""
-    from ribbon.lattice import read_lattice, shelf  # noqa: PLC0415
+    from ribbon.lattice import read_lattice, shelf
 
     found = {name: read_lattice(name).about for name in shelf()}
     width = max(map(len, found), default=0)

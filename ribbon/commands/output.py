@@ -73,15 +73,15 @@ def json_text(value: object) -> str:
       ]
     }
     """
-    import json  # noqa: PLC0415
+    import json
 
     return json.dumps(_plain(value), indent=2, ensure_ascii=False, allow_nan=False)
 
 
 def _plain(value: Any) -> Any:
     """Turn whatever the study room hands over into what JSON knows."""
-    import dataclasses  # noqa: PLC0415
-    import math  # noqa: PLC0415
+    import dataclasses
+    import math
 
     if hasattr(value, "to_records"):
         value = value.to_records()

@@ -61,13 +61,13 @@ class Progress:
 
     def _draw(self, stage: str, fraction: float | None) -> None:
         if self._live is None:
-            from rich.console import Console  # noqa: PLC0415
-            from rich.progress import (  # noqa: PLC0415
+            from rich.console import Console
+            from rich.progress import (
                 BarColumn,
                 TextColumn,
                 TimeElapsedColumn,
             )
-            from rich.progress import Progress as Bar  # noqa: PLC0415
+            from rich.progress import Progress as Bar
 
             self._live = Bar(
                 TextColumn("{task.description}"),

@@ -36,8 +36,8 @@ def study(
     """
     ribbon_file = load(file, overrides)
     folder = out if out is not None else Path(f"{file.stem}-study")
-    from ribbon.study.folder import check_folder, write_folder  # noqa: PLC0415
-    from ribbon.study.run import run_study  # noqa: PLC0415
+    from ribbon.study.folder import check_folder, write_folder
+    from ribbon.study.run import run_study
 
     check_folder(folder, replace=replace)
     with Progress(quiet=quiet) as progress:

@@ -32,8 +32,8 @@ def levels(
     check_target(out, not_over=file)
     ribbon_file = load(file, overrides)
     guard_inputs(ribbon_file, out)
-    from ribbon.study.run import run_levels  # noqa: PLC0415
-    from ribbon.study.tables import levels_table  # noqa: PLC0415
+    from ribbon.study.run import run_levels
+    from ribbon.study.tables import levels_table
 
     with Progress(quiet=quiet) as progress:
         result, doubt = known(lambda: run_levels(ribbon_file, progress=progress))
@@ -72,9 +72,9 @@ def flux(
     check_target(totals, not_over=file)
     ribbon_file = load(file, overrides)
     guard_inputs(ribbon_file, out, totals)
-    from ribbon.hopping.units import current_factor  # noqa: PLC0415
-    from ribbon.study.run import run_flux  # noqa: PLC0415
-    from ribbon.study.tables import flux_table, totals_table  # noqa: PLC0415
+    from ribbon.hopping.units import current_factor
+    from ribbon.study.run import run_flux
+    from ribbon.study.tables import flux_table, totals_table
 
     with Progress(quiet=quiet) as progress:
         result, doubt = known(lambda: run_flux(ribbon_file, progress=progress))

@@ -57,7 +57,7 @@ def render_report(result: StudyResult, figures: Mapping[str, str]) -> str:
     Texts from the study are escaped; only the drawings go in as they are, without their
     metadata and with identifiers of their own.
     """
-    from jinja2 import Environment, StrictUndefined  # noqa: PLC0415
+    from jinja2 import Environment, StrictUndefined
 
     source = files("ribbon.study").joinpath("report.html.j2").read_text(encoding="utf-8")
     page = Environment(
@@ -93,7 +93,7 @@ def inline_svg(svg: str, name: str, alternative: str) -> Markup:
     several drawings do not share one; colours become variables, so that a dark page can turn
     them.
     """
-    from markupsafe import Markup, escape  # noqa: PLC0415
+    from markupsafe import Markup, escape
 
     body = svg[svg.index("<svg") :]
     body = re.sub(r"<metadata>.*?</metadata>", "", body, flags=re.DOTALL)
@@ -114,7 +114,7 @@ def _variable(found: re.Match[str]) -> str:
 
 def _colours() -> list[tuple[str, str]]:
     """Colours of the drawings on paper and on a dark page."""
-    from ribbon.study.figures.look import DARK  # noqa: PLC0415
+    from ribbon.study.figures.look import DARK
 
     return list(DARK.items())
 

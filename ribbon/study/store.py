@@ -31,7 +31,7 @@ def write_results(result: StudyResult, path: Path) -> None:
 
 def case_dataset(case: Case) -> xr.Dataset:
     """What is known of one case, as a labelled dataset; states as real and imaginary parts."""
-    import xarray as xr  # noqa: PLC0415  # heavy, and only where results are written
+    import xarray as xr
 
     unit = case.levels.unit
     variables: dict[str, Any] = {
