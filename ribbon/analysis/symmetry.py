@@ -8,7 +8,7 @@ allows the wave numbers with exp(i k L) parity^h = sigma^h; a threading flux shi
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from functools import cached_property
 
 import numpy as np
@@ -28,6 +28,8 @@ __all__ = ["Blocks", "Sector", "Spectrum", "find_blocks", "why_no_blocks"]
 class Sector:
     """One parity: the cell sites as ``row`` and ``weight`` in its basis, and its momenta.
 
+    ``glide`` says that the flip moves sites by half a period along.
+
     ``momenta`` holds n + delta for every wave number k = 2 pi (n + delta + flux) / L.
     """
 
@@ -36,6 +38,7 @@ class Sector:
     weight: FloatArray
     size: int
     momenta: FloatArray
+    glide: bool
 
 
 @dataclass(frozen=True, kw_only=True, eq=False)
@@ -120,13 +123,18 @@ class Blocks:
         labels = np.concatenate([self._labels(i) for i in range(self.parts)], axis=1)
         momentum = np.concatenate([np.repeat(s.momenta + flux, s.size) for s in self.sectors])
         parity = np.array([s.parity for s in self.sectors])[labels[0]]
+        # a reciprocal vector turns the sign of Bloch waves by half a period along: folding the
+        # momentum of a ring whose flip is a glide turns its parity too
+        folds = _folds(momentum, self.ring.strip.length)
+        glide = np.array([s.glide for s in self.sectors])[labels[0]]
+        parity = np.where(glide & (folds % 2 == 1), -parity, parity)
         order = np.lexsort((labels[1], labels[0], _rounded(energies, tolerance(self.hamiltonian))))
         # a rounded key keeps the order of exactly equal levels steady; energies stay ascending
         order = order[np.argsort(energies[order], kind="stable")]
         return Spectrum(
             energies=energies[order],
             slopes=np.concatenate([slope.ravel() for _, slope, _ in parts])[order],
-            momentum=_fold(momentum[order], self.ring.strip.length),
+            momentum=momentum[order] - self.ring.strip.length * folds[order],
             parity=parity[order],
             sector=labels[0][order],
             block=labels[1][order],
@@ -272,6 +280,7 @@ def _sectors(ring: Ring, energies: FloatArray) -> tuple[Sector, ...]:
         carried = sign if trivial else sign * parity
         momenta = _momenta(strip.length, 0.0 if carried > 0 else 0.5)
         sector = _sector(flip, parity, momenta, label=parity if known else 0)
+        sector = replace(sector, glide=known and _moves_half(strip, flip))
         if sector.size and momenta.size:
             found.append(sector)
     return tuple(found)
@@ -301,7 +310,9 @@ def _sector(flip: IntArray, parity: int, momenta: FloatArray, *, label: int) -> 
     leaders = np.unique(first[weight != 0])
     row = np.searchsorted(leaders, first)
     row[weight == 0] = 0
-    return Sector(parity=label, row=row, weight=weight, size=leaders.size, momenta=momenta)
+    return Sector(
+        parity=label, row=row, weight=weight, size=leaders.size, momenta=momenta, glide=False
+    )
 
 
 def _momenta(length: float, offset: float) -> FloatArray:
@@ -310,9 +321,16 @@ def _momenta(length: float, offset: float) -> FloatArray:
     return np.arange(max(count, 0), dtype=np.float64) + offset
 
 
-def _fold(momentum: FloatArray, length: float) -> FloatArray:
-    """Fold k L / 2 pi into (-length/2, length/2]."""
-    return np.asarray(momentum - length * np.ceil(momentum / length - 0.5 - 1e-12))
+def _folds(momentum: FloatArray, length: float) -> IntArray:
+    """How many reciprocal vectors fold k L / 2 pi into (-length/2, length/2]."""
+    return np.ceil(momentum / length - 0.5 - 1e-12).astype(np.int64)
+
+
+def _moves_half(strip: Strip, flip: IntArray) -> bool:
+    """True where the flip moves sites by half a period along (a glide)."""
+    cell = strip.cell
+    moved = (cell.x[flip] - cell.x) % cell.period
+    return bool(np.allclose(moved, cell.period / 2, rtol=0, atol=1e-5))
 
 
 def _rounded(energies: FloatArray, same: float) -> NDArray[np.float64]:
