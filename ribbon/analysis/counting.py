@@ -22,6 +22,7 @@ from ribbon.analysis.levels import AnyArray, IntArray
 __all__ = ["Count", "Order", "count_negative", "find_order"]
 
 SMALL_PIVOT = 1e-3
+NO_PIVOT = 1e-12
 ROUNDING = 8.0 * float(np.finfo(np.float64).eps)
 
 
@@ -68,12 +69,15 @@ def count_negative(matrix: csr_array, energy: float, order: Order) -> Count:
         pivots, turn = scipy.linalg.eigh(front, check_finite=False, overwrite_a=True, driver="evd")
         # directions carried on from earlier fronts stand first and couple to this block only
         coupling = turn[turn.shape[0] - onward.shape[0] :].conj().T @ onward
-        good = np.abs(pivots) > SMALL_PIVOT * scale
+        size, reach = np.abs(pivots), np.linalg.norm(coupling, axis=1)
+        # a small pivot is no danger where its coupling is as small: flat bands have many such
+        harmless = (size > NO_PIVOT * scale) & (reach <= size / SMALL_PIVOT)
+        good = (size > SMALL_PIVOT * scale) | harmless
         below += int(np.count_nonzero(pivots[good] < 0))
         scaled = coupling[good] / pivots[good, None]
         schur = next_block - coupling[good].conj().T @ scaled
         growth = float(np.linalg.norm(scaled) * np.linalg.norm(onward))
-        radius = max(radius, ROUNDING * (scale * np.sqrt(turn.shape[0]) + growth))
+        radius = max(radius, ROUNDING * float(scale * np.sqrt(turn.shape[0]) + growth))
         front = _join(pivots[~good], coupling[~good], schur)
     last = scipy.linalg.eigvalsh(front, check_finite=False)
     below += int(np.count_nonzero(last < 0))

@@ -46,7 +46,7 @@ class Model:
     label: str
     hamiltonian: Hamiltonian
     flux_scale: float = 1.0
-    size_scale: int = 1
+    size_scale: float = 1.0
 
 
 @dataclass(frozen=True, kw_only=True, eq=False)
@@ -74,7 +74,7 @@ class Plan:
 
     def window_for(self, model: Model) -> Window:
         """The window of a case: a cover that is twice as large has twice as many levels."""
-        return replace(self.window, count=self.window.count * model.size_scale)
+        return replace(self.window, count=self.window.count * max(1, round(model.size_scale)))
 
     def filling_for(self, model: Model) -> Filling:
         """The filling of a case: numbers of electrons grow with the cover."""

@@ -76,6 +76,7 @@ def _neighbours(plan: Plan) -> tuple[list[Model], list[str]]:
                 name=name,
                 label=f"{name} plain ring",
                 hamiltonian=on_network(hamiltonian, near, values[~np.isnan(values)]),
+                size_scale=near.n / ring.n,
             )
         )
     missing = f"no plain ring of length {ring.strip.length:g} exists"
