@@ -562,3 +562,18 @@ def test_every_command_and_option_is_documented(word):
     """A verb or option that README.md and DEVELOPERS.md do not name does not exist for a reader."""
     text = "".join((ROOT / name).read_text("utf-8") for name in ("README.md", "DEVELOPERS.md"))
     assert re.search(rf"(?<![\w-]){word}(?![\w-])", text), f"{word} is not documented"
+
+
+def test_a_sweep_that_cannot_be_certified_ends_with_status_three(
+    run: Any, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """One sentence that names the sweep, no traceback."""
+
+    def doubtful(*_: Any, **__: Any) -> None:
+        raise NotCertified("the window holds 3 levels, but the iteration found 2")
+
+    monkeypatch.setattr("ribbon.study.run.sweep_flux", doubtful)
+    status, out, err = run("flux", "ring.toml")
+    assert status == 3
+    assert not out
+    assert "flux sweep" in err

@@ -79,6 +79,8 @@ def flux(
     with Progress(quiet=quiet) as progress:
         result, doubt = known(lambda: run_flux(ribbon_file, progress=progress))
     case, unit = result.ribbon, ribbon_file.hopping.unit
+    if case.response is None:  # a point could not be certified; the failed check says which
+        judge(result, doubt)
     table = flux_table(case, unit)
     summed = case.response is not None and case.response.totals is not None
     sums = totals_table(case, unit) if summed else None

@@ -177,8 +177,11 @@ def _levels_case(plan: Plan, model: Model) -> Case:
 def _with_states(hamiltonian: Hamiltonian, window: Any, flux: float) -> Levels:
     """Levels, with their states where these fit into a file one would like to keep."""
     wanted = levels_wanted(hamiltonian, window)
-    states = hamiltonian.n * wanted * 16 <= MOST_KEPT
     try:
+        if blocks_of(hamiltonian) is not None:
+            # shells may hold many more levels than were asked for; energies alone are cheap
+            wanted = window.find(hamiltonian, flux=flux).m
+        states = hamiltonian.n * wanted * 16 <= MOST_KEPT
         found: Levels = window.find(hamiltonian, flux=flux, states=states)
     except NotCertified as doubt:
         if not isinstance(doubt.partial, Levels):
