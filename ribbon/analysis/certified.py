@@ -14,7 +14,7 @@ from ribbon.analysis.window import Found, levels_of_window, nearest_levels
 from ribbon.errors import NotCertified, TooLarge
 from ribbon.hopping import Hamiltonian
 
-__all__ = ["Edge", "bracket", "counted_edge", "edge_with_count", "window"]
+__all__ = ["MOST_LEVELS", "Edge", "bracket", "counted_edge", "edge_with_count", "window"]
 
 MOST_LEVELS = 4_000
 MOST_BYTES = 2 * 1024**3

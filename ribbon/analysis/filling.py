@@ -21,7 +21,7 @@ from ribbon.errors import BadInput
 from ribbon.hopping import Hamiltonian
 from ribbon.hopping.units import boltzmann
 
-__all__ = ["Filled", "Filling", "Gap", "fill", "find_gap", "occupations"]
+__all__ = ["FINE", "Filled", "Filling", "Gap", "fill", "find_gap", "occupations"]
 
 FINE = 1e-12
 """Levels closer than this part of the spectrum are filled as one shell: rounding, no more.

@@ -68,7 +68,8 @@ def harmonics(totals: Totals, *, orders: int = 8) -> Harmonics:
 
 
 def half_quantum(hamiltonian: Hamiltonian, totals: Totals | None = None) -> HalfQuantum | None:
-    """Compare complete spectra at flux and flux + 1/2; None where they are out of reach.
+    """Compare complete spectra at flux and flux + 1/2; None where they are out of reach,
+    or where no level feels the flux.
 
     ``totals`` of a sweep over one flux quantum in an even number of equal steps show the same
     for the total current.
@@ -76,10 +77,15 @@ def half_quantum(hamiltonian: Hamiltonian, totals: Totals | None = None) -> Half
     clean = blocks_of(hamiltonian) is not None
     if hamiltonian.ring is None or not (clean or fits_dense(hamiltonian, 0.25, states=False)):
         return None
-    difference = 0.0
+    felt, difference = 0.0, 0.0
     for flux in PROBES if clean else PROBES[:1]:
-        here, there = (all_levels(hamiltonian, flux=flux + half).energies for half in (0.0, 0.5))
+        here, quarter, there = (
+            all_levels(hamiltonian, flux=flux + step).energies for step in (0.0, 0.25, 0.5)
+        )
+        felt = max(felt, float(np.abs(here - quarter).max()))
         difference = max(difference, float(np.abs(here - there).max()))
+    if felt <= 100 * tolerance(hamiltonian):
+        return None  # localised: no level feels the flux, and any period would seem to hold
     return HalfQuantum(
         holds=difference <= 10 * tolerance(hamiltonian),
         difference=difference,

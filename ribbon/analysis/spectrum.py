@@ -12,11 +12,11 @@ from typing import Literal
 
 import numpy as np
 
-from ribbon.analysis.certified import bracket, counted_edge, edge_with_count, window
+from ribbon.analysis.certified import MOST_LEVELS, bracket, counted_edge, edge_with_count, window
 from ribbon.analysis.exact import blocks_of, by_dense, by_symmetry, part_of
 from ribbon.analysis.levels import FloatArray, Levels, shell_edges, tolerance
 from ribbon.analysis.symmetry import why_no_blocks
-from ribbon.errors import BadInput
+from ribbon.errors import BadInput, TooLarge
 from ribbon.hopping import Hamiltonian
 
 __all__ = [
@@ -105,6 +105,11 @@ def levels_near(
         whole = all_levels(hamiltonian, flux=flux, method=_exact(hamiltonian, method))
         first, last, edges = nearest_shells(whole.energies, energy, count, tolerance(hamiltonian))
         return part_of(hamiltonian, whole, first, last, states=states, edges=edges)
+    if count > MOST_LEVELS:
+        raise TooLarge(
+            f"levels.count = {count:,} without symmetry is more than {MOST_LEVELS:,}; ask for "
+            "fewer, or for levels.all on a ring small enough for it"
+        )
     low, high, guess = bracket(hamiltonian, energy, count, flux)
     found = window(hamiltonian, low, high, flux, states=states, guess=guess)
     first, last, edges = nearest_shells(found.energies, energy, count, tolerance(hamiltonian))

@@ -254,7 +254,8 @@ def _distances(lattice: Lattice) -> list[float]:
     if np.count_nonzero(distance < TOLERANCE) > len(home):
         raise BadInput("two sites of the lattice stand on the same place")
     distance = distance[distance >= TOLERANCE]
-    first = np.concatenate([[True], np.diff(distance) > TOLERANCE])
+    # numbers in a file are rounded: distances this close are one shell
+    first = np.concatenate([[True], np.diff(distance) > 1e3 * TOLERANCE])
     return [float(value) for value in distance[first]]
 
 

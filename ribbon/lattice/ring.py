@@ -239,7 +239,7 @@ def cell_bonds(strip: Strip, shells: int) -> CellBonds:
             f"names {len(known)}"
         )
     cell = strip.cell
-    reach = known[shells - 1] + 10 * TOLERANCE
+    reach = known[shells - 1] + 2e3 * TOLERANCE
     ahead = int(np.ceil(reach / cell.period)) + 1
     home = np.column_stack([cell.x, cell.y])
     along = np.arange(-1, ahead + 1)

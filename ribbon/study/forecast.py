@@ -95,7 +95,8 @@ def forecast_levels(hamiltonian: Hamiltonian, window: Window, flux: float) -> Fo
     if n <= 600:
         return _dense(n, DENSE_VALUES)
     seconds = SPARSE_SITE * n * (1 + (window.count or 40) / 40)
-    return Forecast(method="sparse", seconds=seconds, bytes=n * (1500 + 32 * window.count))
+    held = n * (1500 + 32 * min(window.count, n))
+    return Forecast(method="sparse", seconds=seconds, bytes=held)
 
 
 def forecast_sweep(hamiltonian: Hamiltonian, fluxes: FloatArray, window: Window) -> Forecast:

@@ -26,6 +26,7 @@ from ribbon.analysis import (
     sweep_flux,
 )
 from ribbon.analysis.exact import blocks_of, fits_dense
+from ribbon.analysis.levels import tolerance
 from ribbon.errors import BadInput, NotCertified
 from ribbon.hopping import Hamiltonian, assemble
 from ribbon.lattice import certify_topology, reseam
@@ -196,8 +197,14 @@ def _electron_number(plan: Plan, model: Model, flux: float) -> float:
     if number is not None:
         return number
     assert filling.chemical_potential is not None
-    below = count_below(model.hamiltonian, filling.chemical_potential, flux=flux)
-    return float(filling.spin * below)
+    return _electrons_at(model.hamiltonian, filling.chemical_potential, filling.spin, flux)
+
+
+def _electrons_at(hamiltonian: Hamiltonian, potential: float, spin: int, flux: float) -> float:
+    """Electrons at a chemical potential and 0 K; a level that stands on it is half filled."""
+    below = count_below(hamiltonian, potential, flux=flux)
+    upto = count_below(hamiltonian, potential + 2 * tolerance(hamiltonian), flux=flux)
+    return spin * (below + upto) / 2
 
 
 def _other_gap(plan: Plan, model: Model, electrons: float, flux: float) -> Gap | None:
@@ -211,7 +218,7 @@ def _other_gap(plan: Plan, model: Model, electrons: float, flux: float) -> Gap |
     partner = assemble(other, hopping)
     potential = plan.filling.chemical_potential
     if potential is not None:  # the reservoir sets the level, not the number
-        electrons = float(plan.filling.spin * count_below(partner, potential, flux=flux))
+        electrons = _electrons_at(partner, potential, plan.filling.spin, flux)
     return find_gap(partner, electrons=electrons, spin=plan.filling.spin, flux=flux)
 
 

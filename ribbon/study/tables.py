@@ -14,7 +14,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from ribbon.analysis.levels import tolerance
+from ribbon.analysis.filling import FINE
 from ribbon.hopping.units import current_factor
 
 if TYPE_CHECKING:
@@ -145,7 +145,7 @@ def levels_table(case: Case, unit: str) -> Table:
         levels.index,
         electrons=case.electrons,
         spin=case.spin,
-        same=tolerance(case.hamiltonian),
+        same=FINE * case.hamiltonian.scale,
     )
     return Table(
         f"levels-{case.name}",
@@ -262,7 +262,10 @@ def shift_table(case: Case, control: Case) -> Table:
     m times as many sites has m levels for each; their mean is taken.
     """
     copies = max(1, round(control.network.n / case.network.n))
-    own, other = _from_gap(case, 1), _from_gap(control, copies)
+    filled = math.ceil(case.electrons / case.spin - 1e-9)
+    # the levels of a cover come in groups of ``copies``, counted from the bottom of the band
+    over = math.ceil(control.electrons / control.spin - 1e-9) if copies == 1 else filled
+    own, other = _from_gap(case, 1, filled), _from_gap(control, copies, over)
     places = sorted(own.keys() & other.keys())
     here = np.array([own[p][1] for p in places])
     there = np.array([other[p][1] for p in places])
@@ -281,12 +284,13 @@ def shift_table(case: Case, control: Case) -> Table:
     )
 
 
-def _from_gap(case: Case, copies: int) -> dict[int, tuple[int, float]]:
-    """Levels by their place from the frontier: (first level, mean energy of ``copies``)."""
-    filled = math.ceil(case.electrons / case.spin - 1e-9)
+def _from_gap(case: Case, copies: int, filled: int) -> dict[int, tuple[int, float]]:
+    """Levels by their place from the frontier: (first level, mean energy of ``copies``).
+
+    ``filled`` counts the groups of ``copies`` levels below the frontier.
+    """
     index = np.asarray(case.levels.index)
-    # floor division counts whole groups away from the frontier on both sides
-    group = (index - filled) // copies
+    group = index // copies - filled
     found: dict[int, tuple[int, float]] = {}
     for number in np.unique(group):
         members = group == number
