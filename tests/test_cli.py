@@ -436,7 +436,7 @@ def test_an_interrupt_ends_with_130_and_leaves_nothing(here):
         "threading.Timer(0.5, lambda: os.kill(os.getpid(), signal.SIGINT)).start()\n"
         "sys.exit(main(['study', 'ring.toml', '--set', 'ribbon.rows=3',\n"
         "    '--set', 'ribbon.length=60', '--set', 'disorder.strength=1.0',\n"
-        "    '--set', 'sweep.flux.points=100001']))\n"
+        "    '--set', 'sweep.flux.points=5001']))\n"
     )
     done = subprocess.run(
         [sys.executable, "-c", script],

@@ -233,10 +233,24 @@ def _positive(value: float, where: str) -> None:
 
 
 def _distances(lattice: Lattice) -> list[float]:
-    """Distinct site distances of the endless two-dimensional lattice, shortest first."""
+    """Distinct site distances of the endless two-dimensional lattice, shortest first.
+
+    The search reaches a few spacings, and farther only where that finds too few: a large cell
+    has very many pairs of sites.
+    """
+    farthest = 3.0 * max(1.0, min(lattice.period, math.hypot(*lattice.repeat)))
+    found: list[float] = []
+    for reach in (2.6, 5.2, farthest):
+        found = _distances_within(lattice, reach)
+        wanted = max(3, len(lattice.shells))
+        if len(found) >= wanted and found[-1] > max(lattice.shells, default=0.0):
+            break
+    return found
+
+
+def _distances_within(lattice: Lattice, reach: float) -> list[float]:
     x = np.concatenate([line.x for line in lattice.lines])
     y = np.concatenate([[line.y] * len(line.x) for line in lattice.lines])
-    reach = 3.0 * max(1.0, min(lattice.period, math.hypot(*lattice.repeat)))
     cycles = np.arange(-math.ceil(reach / lattice.repeat[1]) - 1, 2 + reach // lattice.repeat[1])
     along = np.arange(-math.ceil(reach / lattice.period) - 1, 2 + reach // lattice.period)
     if x.size * cycles.size * along.size > 5_000_000:
@@ -255,7 +269,7 @@ def _distances(lattice: Lattice) -> list[float]:
         raise BadInput("two sites of the lattice stand on the same place")
     distance = distance[distance >= TOLERANCE]
     # numbers in a file are rounded: distances this close are one shell
-    first = np.concatenate([[True], np.diff(distance) > 1e3 * TOLERANCE])
+    first = np.concatenate([[True], np.diff(distance) > 1e3 * TOLERANCE])[: distance.size]
     return [float(value) for value in distance[first]]
 
 

@@ -107,10 +107,11 @@ def forecast_sweep(hamiltonian: Hamiltonian, fluxes: FloatArray, window: Window)
         one = _dense(hamiltonian.n, DENSE_STATES)
         reduced = np.abs(fluxes - np.rint(fluxes)).round(12)
         points = np.unique(reduced).size
-    rows = fluxes.size * levels_wanted(hamiltonian, window)
-    return Forecast(
-        method=one.method, seconds=one.seconds * points, bytes=one.bytes + BYTES_PER_ROW * rows
-    )
+    wanted = levels_wanted(hamiltonian, window)
+    held = BYTES_PER_ROW * fluxes.size * wanted
+    if one.method == "dense":  # states of the window at every flux, until its mirror comes
+        held += 16 * points * hamiltonian.n * wanted
+    return Forecast(method=one.method, seconds=one.seconds * points, bytes=one.bytes + held)
 
 
 def _dense(n: int, cost: float) -> Forecast:

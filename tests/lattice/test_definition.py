@@ -238,3 +238,18 @@ def test_files_that_cannot_be_read(tmp_path: Path) -> None:
     huge.write_text("#" * 1_000_001, encoding="utf-8")
     with pytest.raises(BadInput, match="larger than 1 MB"):
         read_lattice(huge)
+
+
+def test_large_cells_are_read_with_a_short_search() -> None:
+    """A super-cell of 30 x 30 square sites: the same shells, by the sites near each other only."""
+    lines = tuple(
+        Line(
+            y=float(row),
+            x=tuple(float(i) for i in range(30)),
+            species=("site",) * 30,
+            sublattice=("A",) * 30,
+        )
+        for row in range(30)
+    )
+    found = Lattice(name="super", spacing=1.0, period=30.0, repeat=(0.0, 30.0), lines=lines)
+    np.testing.assert_allclose(found.shells, [1.0, np.sqrt(2), 2.0], rtol=0, atol=1e-9)
