@@ -572,8 +572,26 @@ def test_a_sweep_that_cannot_be_certified_ends_with_status_three(
     def doubtful(*_: Any, **__: Any) -> None:
         raise NotCertified("the window holds 3 levels, but the iteration found 2")
 
-    monkeypatch.setattr("ribbon.study.run.sweep_flux", doubtful)
+    monkeypatch.setattr("ribbon.study.cases.sweep_flux", doubtful)
     status, out, err = run("flux", "ring.toml")
     assert status == 3
     assert not out
     assert "flux sweep" in err
+
+
+def test_levels_without_a_certified_gap_are_written_all_the_same(
+    run: Any, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """Exit status 3 keeps what is known: the levels stand, the gap is null, a check fails."""
+
+    def doubtful(*_: Any, **__: Any) -> None:
+        raise NotCertified("the frontier holds 2 levels, but the iteration found 1")
+
+    monkeypatch.setattr("ribbon.study.cases.find_gap", doubtful)
+    status, out, err = run("levels", "ring.toml", "--json")
+    assert status == 3
+    told = json.loads(out)
+    assert told["levels"]
+    assert told["gap"]["gap"] is None
+    assert "not certified" in err
+    assert "the frontier holds" in str(told["checks"])

@@ -1,6 +1,6 @@
 """Certified counts and windows against dense spectra of brute-force matrices and closed forms.
 
-Convention under test: a level within ``tolerance`` (1e-10 of a bound of the spectrum) of an energy
+Convention under test: a level within ``tolerance`` (1e-10 of the bonds at a site) of an energy
 is not below it; windows include both of their edges and whole shells. Sylvester's law of inertia:
 B. N. Parlett, The Symmetric Eigenvalue Problem (1998) [M].
 """
@@ -18,7 +18,7 @@ from brute import Case, cases
 from hypothesis import given
 from hypothesis import strategies as st
 
-from ribbon.analysis import all_levels, count_below, levels_between, levels_near
+from ribbon.analysis import all_levels, count_below, find_gap, levels_between, levels_near
 from ribbon.errors import BadInput
 from ribbon.hopping import Hopping, assemble, draw_vacancies
 from ribbon.lattice import Network, certify_topology, close_strip, lay_strip, remove_sites
@@ -82,7 +82,7 @@ def test_counts_equal_dense_counts(lattice: str) -> None:
         hamiltonian, matrix, flux, rng = random_ring(lattice, number)
         levels = np.linalg.eigvalsh(matrix)
         for energy in energies_to_try(levels, rng):
-            expected = levels_below(levels, energy, hamiltonian.scale)
+            expected = levels_below(levels, energy, hamiltonian.bond_scale)
             if expected is not None:
                 found = count_below(hamiltonian, energy, flux=flux)
                 assert found == expected, (lattice, number, flux, energy)
@@ -101,7 +101,7 @@ def test_counts_of_clean_networks_equal_dense_counts(lattice: str, ring_of: Buil
         hamiltonian = assemble(Network.from_pairs(pairs), Hopping(shells=(1.0,)))
         levels = case.levels()
         for energy in energies_to_try(levels, rng):
-            expected = levels_below(levels, energy, hamiltonian.scale)
+            expected = levels_below(levels, energy, hamiltonian.bond_scale)
             if expected is not None:
                 assert count_below(hamiltonian, energy) == expected, (case, energy)
 
@@ -134,7 +134,7 @@ def test_counts_of_large_clean_rings(case: Case, energy: float, ring_of: Build) 
     barely[0] = 1e-300  # not clean in the eyes of the library, and the same matrix to it
     for site_energy in (0.0, barely):
         hamiltonian = assemble(ring, Hopping(shells=(1.0,), site_energy=site_energy))
-        below = levels_below(levels, energy, hamiltonian.scale)
+        below = levels_below(levels, energy, hamiltonian.bond_scale)
         assert below is not None
         assert count_below(hamiltonian, energy) == below
 
@@ -343,3 +343,12 @@ def test_zero_levels_of_a_ribbon_with_vacancies(
     owed = certify_topology(ring).guaranteed_zero_levels
     assert owed
     assert np.count_nonzero(np.abs(levels) < LEVEL) >= owed
+
+
+@pytest.mark.parametrize("offset", [0.0, 1e6, -3e7])
+def test_a_common_offset_does_not_join_levels(offset: float) -> None:
+    """A dimer with t = 1e-3 far from the zero of energy still has two levels and a gap of 2 t."""
+    pair = Network.from_pairs([(0, 1)])
+    hamiltonian = assemble(pair, Hopping(shells=(1e-3,), site_energy=offset))
+    assert find_gap(hamiltonian).gap == pytest.approx(2e-3, abs=1e-7)
+    assert levels_near(hamiltonian, offset - 1e-3, count=1).m == 1

@@ -15,19 +15,13 @@ from scipy.optimize import brentq
 from scipy.special import expit, xlogy
 
 from ribbon.analysis.exact import blocks_of, fits_dense
-from ribbon.analysis.levels import FloatArray, IntArray, Levels, shell_edges
+from ribbon.analysis.levels import FloatArray, IntArray, Levels, finest, shell_edges
 from ribbon.analysis.spectrum import all_levels, levels_at
 from ribbon.errors import BadInput
 from ribbon.hopping import Hamiltonian
 from ribbon.hopping.units import boltzmann
 
-__all__ = ["FINE", "Filled", "Filling", "Gap", "fill", "find_gap", "occupations"]
-
-FINE = 1e-12
-"""Levels closer than this part of the spectrum are filled as one shell: rounding, no more.
-
-Finer than the shells of a window, so that edge states split by little are not shared out.
-"""
+__all__ = ["Filled", "Filling", "Gap", "fill", "find_gap", "occupations"]
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -84,6 +78,11 @@ class Gap:
     upper_index: int
     open_shell: bool
 
+    @property
+    def known(self) -> bool:
+        """False where the frontier could not be certified."""
+        return not (np.isnan(self.lower) and np.isnan(self.upper))
+
 
 @dataclass(frozen=True, kw_only=True)
 class Filled:
@@ -108,7 +107,7 @@ def find_gap(
     """Frontier levels and gap at a filling with so many electrons, at zero temperature.
 
     Where every level is full or empty there is no gap to speak of: ``upper`` or ``lower`` and
-    ``gap`` are then NaN.
+    ``gap`` are then NaN. Raises `NotCertified` where the frontier cannot be certified.
 
     >>> from ribbon.lattice import Network
     >>> from ribbon.hopping import Hopping, assemble
@@ -130,7 +129,7 @@ def find_gap(
         place = dict(zip(found.index.tolist(), found.energies.tolist(), strict=True))
         lower, upper = place[highest], place[lowest]
     gap = max(upper - lower, 0.0)
-    open_shell = gap <= FINE * hamiltonian.scale
+    open_shell = gap <= finest(hamiltonian)
     return Gap(
         lower=lower,
         upper=upper,
@@ -160,27 +159,25 @@ def fits_small(hamiltonian: Hamiltonian, flux: float) -> bool:
     return hamiltonian.n <= 1500 and fits_dense(hamiltonian, flux, states=False)
 
 
-def occupations(levels: Levels, filling: Filling, *, sites: int, scale: float) -> FloatArray | None:
+def occupations(levels: Levels, filling: Filling, *, sites: int, same: float) -> FloatArray | None:
     """Electrons in every level of ``levels``, shape (m,); None where only a window is known."""
     if levels.certificate.count_lower or levels.m < sites:
         return None
-    occupied, _, _ = _occupy(levels.energies, filling, sites=sites, scale=scale, unit=levels.unit)
+    occupied, _, _ = _occupy(levels.energies, filling, sites=sites, same=same, unit=levels.unit)
     return occupied
 
 
 def fill(
-    energies: FloatArray, slopes: FloatArray, filling: Filling, *, scale: float, unit: str
+    energies: FloatArray, slopes: FloatArray, filling: Filling, *, same: float, unit: str
 ) -> Filled:
-    """Fill a complete spectrum; ``slopes`` are dE/d(flux), ``scale`` bounds the spectrum.
+    """Fill a complete spectrum with slopes dE/d(flux); levels within ``same`` are one shell.
 
     At zero temperature a shell cut by the filling is shared equally and flagged; ``left`` and
     ``right`` are the one-sided slopes, filling the shell's members that are lowest just before
     and just after this flux.
     """
     spin = filling.spin
-    occupied, potential, cut = _occupy(
-        energies, filling, sites=energies.size, scale=scale, unit=unit
-    )
+    occupied, potential, cut = _occupy(energies, filling, sites=energies.size, same=same, unit=unit)
     electrons = float(occupied.sum())
     slope = float(occupied @ slopes)
     left = right = slope
@@ -213,7 +210,7 @@ def _lowest(slopes: FloatArray, electrons: float, spin: int) -> float:
 
 
 def _occupy(
-    energies: FloatArray, filling: Filling, *, sites: int, scale: float, unit: str
+    energies: FloatArray, filling: Filling, *, sites: int, same: float, unit: str
 ) -> tuple[FloatArray, float, tuple[int, int] | None]:
     """Occupations, chemical potential, and the shell that the filling cuts at T = 0."""
     number = filling.number(sites)
@@ -227,7 +224,6 @@ def _occupy(
             assert number is not None
             potential = _solve_potential(energies, number / filling.spin, thermal)
         return filling.spin * expit((potential - energies) / thermal), potential, None
-    same = FINE * scale
     if number is None:
         assert filling.chemical_potential is not None
         return _below(energies, filling.chemical_potential, filling.spin, same)
@@ -282,9 +278,8 @@ def _solve_potential(energies: FloatArray, levels: float, thermal: float) -> flo
         )
         return float(electrons - np.logaddexp(holes, rest))
 
-    return float(
-        brentq(excess, energies[0] - spread, energies[-1] + spread, xtol=1e-15, rtol=1e-14)
-    )
+    ends = (energies[0] - spread, energies[-1] + spread)
+    return float(brentq(excess, *ends, xtol=1e-14 * thermal, rtol=1e-14))
 
 
 def _potential(

@@ -12,7 +12,7 @@ from numpy.typing import ArrayLike, NDArray
 from ribbon.analysis.exact import blocks_of, fits_dense, resolve_slopes, to_uniform
 from ribbon.analysis.filling import Filled, Filling, fill
 from ribbon.analysis.joining import Follower, follow_bands
-from ribbon.analysis.levels import AnyArray, FloatArray, IntArray, Levels, tolerance
+from ribbon.analysis.levels import AnyArray, FloatArray, IntArray, Levels, finest, tolerance
 from ribbon.analysis.spectrum import all_levels, levels_between, levels_near, nearest_shells
 from ribbon.analysis.symmetry import Blocks, Spectrum
 from ribbon.errors import BadInput
@@ -166,7 +166,7 @@ def _sweep_blocks(
             here = np.flatnonzero(new.sector[part] == i)
             branch[here] = numbers[new.block[part][here], new.band[part][here]]
         filled = fill(
-            new.energies, new.slopes, filling, scale=hamiltonian.scale, unit=hamiltonian.unit
+            new.energies, new.slopes, filling, same=finest(hamiltonian), unit=hamiltonian.unit
         )
         level = np.arange(first, last)
         out.append(_Point(level, new.energies[part], new.slopes[part], branch, filled))
@@ -207,7 +207,7 @@ def _sweep_dense(
         energies, slopes, states, first, last = known[key]
         if reversible and reduced < 0:
             slopes, states = -slopes, states.conj()
-        filled = fill(energies, slopes, filling, scale=hamiltonian.scale, unit=hamiltonian.unit)
+        filled = fill(energies, slopes, filling, same=finest(hamiltonian), unit=hamiltonian.unit)
         part = slice(first, last)
         branch = follower.join(
             to_uniform(hamiltonian, float(flux), states), energies[part], slopes[part], float(flux)

@@ -11,12 +11,12 @@ from numpy.typing import NDArray
 from ribbon.hopping import Hamiltonian
 
 __all__ = [
-    "SAME",
     "AnyArray",
     "Certificate",
     "FloatArray",
     "IntArray",
     "Levels",
+    "finest",
     "shell_edges",
     "tolerance",
 ]
@@ -26,12 +26,27 @@ IntArray = NDArray[np.int64]
 AnyArray = NDArray[Any]
 
 SAME = 1e-10
-"""Levels closer than this part of a bound of the spectrum are one shell."""
+"""Levels closer than this part of the bonds at a site are one shell."""
+
+FINE = 1e-12
+"""Levels closer than this part of the bonds at a site are filled as one shell: no more than
+rounding, so that edge states split by little are not shared out."""
+
+ROUNDING = 100 * float(np.finfo(np.float64).eps)
+"""Error of a computed level in parts of a bound of the spectrum."""
 
 
 def tolerance(hamiltonian: Hamiltonian) -> float:
-    """Levels closer than this are one shell: 1e-10 of a bound of the spectrum."""
-    return SAME * hamiltonian.scale
+    """Levels closer than this are one shell: 1e-10 of the bonds at a site, and rounding.
+
+    A common offset or a deep site does not make it coarser than rounding does.
+    """
+    return SAME * hamiltonian.bond_scale + ROUNDING * hamiltonian.scale
+
+
+def finest(hamiltonian: Hamiltonian) -> float:
+    """Levels closer than this are filled as one shell: rounding, no more."""
+    return FINE * hamiltonian.bond_scale + ROUNDING * hamiltonian.scale
 
 
 @dataclass(frozen=True, kw_only=True)

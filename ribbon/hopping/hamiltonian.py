@@ -66,6 +66,14 @@ class Hamiltonian:
         return float(np.max(rows + np.abs(self.site_energies), initial=0.0)) or 1.0
 
     @cached_property
+    def bond_scale(self) -> float:
+        """Largest sum of the bonds at one site; the bound of the spectrum where there is none."""
+        bonds, weight = self.network.bonds, np.abs(self.amplitudes)
+        rows = np.bincount(bonds.tail, weights=weight, minlength=self.n)
+        rows += np.bincount(bonds.head, weights=weight, minlength=self.n)
+        return float(np.max(rows, initial=0.0)) or self.scale
+
+    @cached_property
     def site_turns(self) -> FloatArray:
         """x of every site as a fraction of the circumference (zeros for a bare network)."""
         if self.ring is None:

@@ -32,7 +32,8 @@ class Topology:
     to itself counts 2). ``sublattice_balance`` holds the sizes of the two colour classes, and
     ``guaranteed_zero_levels`` how many zero levels a bipartite network cannot avoid (sites left
     over by a maximum matching); both are None where the network is not bipartite. Faces, loops
-    and the Euler characteristic are None for a network in space, whose bonds have no plane.
+    and the Euler characteristic are None where the bonds lie in no plane: for a network in
+    space, or one without positions.
     """
 
     sites: int
@@ -74,7 +75,7 @@ def certify_topology(network: Network) -> Topology:
     colours = _two_colours(network.n, first)
     faces = None
     loops = None
-    if network.positions.shape[1] == 2:
+    if network.positions.shape[1] == 2 and _laid_out(first):
         faces, loops = _faces_and_loops(network, first)
     count = None if faces is None else int(sum(faces.values()))
     return Topology(
@@ -99,6 +100,11 @@ def coordination_numbers(n: int, bonds: Bonds) -> IntArray:
     """Number of bonds at every site, shape (n,); a site bonded to itself counts 2."""
     ends = np.concatenate([bonds.tail, bonds.head])
     return np.bincount(ends, minlength=n)
+
+
+def _laid_out(bonds: Bonds) -> bool:
+    """True where every bond leads somewhere, so that bonds at a site have an order."""
+    return bool(np.all(np.any(bonds.displacement, axis=1)))
 
 
 def _orientation(n: int, bonds: Bonds) -> tuple[int, bool]:

@@ -12,6 +12,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 
 from ribbon.study.captions import caption
+from ribbon.study.meaning import meaning
 from ribbon.study.numbers import number
 from ribbon.study.ribbonfile import complete_toml
 from ribbon.study.tables import (
@@ -23,7 +24,7 @@ from ribbon.study.tables import (
     topology_table,
     totals_table,
 )
-from ribbon.study.wording import comparison, conventions, facts, meaning, subtitle
+from ribbon.study.wording import comparison, conventions, facts, subtitle
 
 if TYPE_CHECKING:
     from markupsafe import Markup

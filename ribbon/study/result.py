@@ -42,6 +42,7 @@ class Case:
     is the flux through this ring for one flux quantum through the ribbon (2 for the double
     cover). ``electrons`` is the number that fills the levels, ``spin`` how many fit in one.
     ``other_gap`` is the gap with the other orbital sign, where there is one.
+    ``doubts`` says what could not be certified.
     """
 
     name: CaseName
@@ -59,6 +60,7 @@ class Case:
     harmonics: Harmonics | None = None
     half: HalfQuantum | None = None
     flux_scale: float = 1.0
+    doubts: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True, kw_only=True, eq=False)

@@ -14,7 +14,7 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
-from ribbon.analysis.filling import FINE
+from ribbon.analysis.levels import finest
 from ribbon.hopping.units import current_factor
 
 if TYPE_CHECKING:
@@ -145,7 +145,7 @@ def levels_table(case: Case, unit: str) -> Table:
         levels.index,
         electrons=case.electrons,
         spin=case.spin,
-        same=FINE * case.hamiltonian.scale,
+        same=finest(case.hamiltonian),
     )
     return Table(
         f"levels-{case.name}",

@@ -30,6 +30,7 @@ from ribbon.analysis import (
     sweep_flux,
 )
 from ribbon.analysis.filling import fill
+from ribbon.analysis.levels import finest
 from ribbon.errors import BadInput
 from ribbon.hopping import Hopping, assemble
 from ribbon.hopping.units import boltzmann
@@ -382,7 +383,7 @@ def test_occupations_from_below(electrons: float, spin: int, levels: list[int]) 
     electrons = min(electrons, 12.0 * spin)
     energies = np.sort(np.array(levels, dtype=float))
     filled = fill(
-        energies, np.zeros(12), Filling(electrons=electrons, spin=spin), scale=5.0, unit="t"
+        energies, np.zeros(12), Filling(electrons=electrons, spin=spin), same=5e-12, unit="t"
     )
     assert math.isclose(filled.electrons, electrons, abs_tol=1e-8)
     assert math.isclose(filled.energy, energy_of(energies, electrons, spin), abs_tol=1e-7)
@@ -394,7 +395,7 @@ def test_occupations_of_levels(hamiltonian_of: Build) -> None:
     Ring of six sites with 7 spinful electrons of 12: 2 + 4, then one in a pair.
     """
     hamiltonian = hamiltonian_of(Case("square", 1, 6, 0))
-    options = {"sites": 6, "scale": hamiltonian.scale}
+    options = {"sites": 6, "same": finest(hamiltonian)}
     whole = all_levels(hamiltonian)
     found = occupations(whole, Filling(electrons=7), **options)
     assert found is not None
@@ -411,7 +412,7 @@ def test_thermal_occupations_are_fermi_functions(ring_of: Build) -> None:
     hamiltonian = assemble(ring_of(Case("square", 2, 5, 1)), Hopping(unit="meV"))
     whole = all_levels(hamiltonian)
     filling = Filling(electrons=None, chemical_potential=0.4, spin=2, temperature=7.0)
-    found = occupations(whole, filling, sites=10, scale=hamiltonian.scale)
+    found = occupations(whole, filling, sites=10, same=finest(hamiltonian))
     expected = 2 / (np.exp((whole.energies - 0.4) / (7.0 * boltzmann("meV"))) + 1)
     assert found is not None
     np.testing.assert_allclose(found, expected, rtol=0, atol=1e-14)

@@ -487,3 +487,10 @@ def test_certificates_count_walks_of_long_rings() -> None:
     assert (found.sites, found.faces, found.boundary_loops) == (30_000, 9 * 1500, 1)
     assert found.euler_characteristic == 0
     assert not found.bipartite
+
+
+def test_bonds_without_places_have_no_order_to_walk_in() -> None:
+    """Benzene given as pairs alone: no faces are claimed, the graph is known all the same."""
+    found = certify_topology(Network.from_pairs([(i, (i + 1) % 6) for i in range(6)]))
+    assert (found.faces, found.boundary_loops, found.euler_characteristic) == (None, None, None)
+    assert (found.bipartite, found.components, found.guaranteed_zero_levels) == (True, 1, 0)

@@ -15,11 +15,12 @@ from small_study import make_study
 
 from ribbon.study.captions import caption
 from ribbon.study.figures import draw_all, to_svg
+from ribbon.study.meaning import meaning
 from ribbon.study.numbers import number, quantity, scaled
 from ribbon.study.report import inline_svg, render_report
 from ribbon.study.result import Check, StudyResult
 from ribbon.study.ribbonfile import complete_toml
-from ribbon.study.wording import comparison, conventions, facts, meaning, peak_current, subtitle
+from ribbon.study.wording import comparison, conventions, facts, peak_current, subtitle
 
 VOID = {"area", "base", "br", "col", "hr", "img", "input", "link", "meta", "source", "wbr"}
 NAMESPACES = {"http://www.w3.org/2000/svg", "http://www.w3.org/1999/xlink"}

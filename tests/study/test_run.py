@@ -16,8 +16,8 @@ from brute import Case
 
 from ribbon.errors import BadInput, TooLarge
 from ribbon.hopping.units import boltzmann
+from ribbon.study import cases as run_module
 from ribbon.study import forecast as forecast_module
-from ribbon.study import run as run_module
 from ribbon.study.figures import draw_all, to_svg
 from ribbon.study.report import render_report
 from ribbon.study.result import StudyResult
