@@ -1,4 +1,4 @@
-"""Ribbons closed into rings with half twists: levels, flux response and topology.
+"""Ribbons closed into rings with half twists: levels, edge states, flux response, topology.
 
 Names at this root load when they are first used, so that importing the package is quick.
 """
@@ -14,10 +14,11 @@ if TYPE_CHECKING:
         Levels,
         Window,
         all_levels,
+        compare_continuum,
         count_below,
+        density_of_states,
+        edge_states,
         find_gap,
-        half_quantum,
-        harmonics,
         levels_between,
         levels_near,
         sweep_flux,
@@ -27,11 +28,10 @@ if TYPE_CHECKING:
         Network,
         certify_topology,
         close_strip,
-        double_cover,
         lay_strip,
         read_lattice,
     )
-    from ribbon.study import read_study, run_study, write_folder
+    from ribbon.study import read_results, read_study, run_study, write_folder
 
 __version__ = "0.1.0"
 
@@ -40,7 +40,6 @@ _ROOMS = {
         "Network",
         "certify_topology",
         "close_strip",
-        "double_cover",
         "lay_strip",
         "read_lattice",
     ),
@@ -50,15 +49,16 @@ _ROOMS = {
         "Levels",
         "Window",
         "all_levels",
+        "compare_continuum",
         "count_below",
+        "density_of_states",
+        "edge_states",
         "find_gap",
-        "half_quantum",
-        "harmonics",
         "levels_between",
         "levels_near",
         "sweep_flux",
     ),
-    "study": ("read_study", "run_study", "write_folder"),
+    "study": ("read_results", "read_study", "run_study", "write_folder"),
 }
 _HOME = {name: room for room, names in _ROOMS.items() for name in names}
 
@@ -73,16 +73,17 @@ __all__ = [
     "assemble",
     "certify_topology",
     "close_strip",
+    "compare_continuum",
     "count_below",
-    "double_cover",
+    "density_of_states",
+    "edge_states",
     "effective_mass",
     "find_gap",
-    "half_quantum",
-    "harmonics",
     "lay_strip",
     "levels_between",
     "levels_near",
     "read_lattice",
+    "read_results",
     "read_study",
     "run_study",
     "sweep_flux",

@@ -18,7 +18,7 @@ from ribbon.commands.build import export, new
 from ribbon.commands.look import describe, lattices
 from ribbon.commands.output import ReaderGoneError, emit, hush_stdout, note
 from ribbon.commands.study import study
-from ribbon.commands.tables import flux, levels
+from ribbon.commands.tables import continuum, edges, flux, levels
 from ribbon.errors import RibbonError
 
 __all__ = ["app", "main"]
@@ -42,7 +42,7 @@ app = typer.Typer(
     pretty_exceptions_enable=False,
     add_completion=False,
 )
-for verb in (study, describe, levels, flux, export, lattices, new):
+for verb in (study, describe, levels, flux, edges, continuum, export, lattices, new):
     app.command()(verb)
 
 
@@ -61,7 +61,7 @@ def start(
         bool, typer.Option("--version", callback=_version, is_eager=True, help="Print the version.")
     ] = False,
 ) -> None:
-    """Levels, flux response and topology of ribbons closed into rings with half twists."""
+    """Levels, edge states and flux response of ribbons closed into rings with half twists."""
     if context.invoked_subcommand is None:
         emit(NEXT_STEPS)
 

@@ -41,11 +41,11 @@ LONGEST_FUNCTION = 50
 MOST_NAMES = 25
 AGREED = {
     *("Lattice", "Strip", "Network", "Ring", "Hopping", "Hamiltonian", "Levels"),
-    *("read_lattice", "lay_strip", "close_strip", "double_cover", "certify_topology"),
+    *("read_lattice", "lay_strip", "close_strip", "certify_topology"),
     *("assemble", "effective_mass", "all_levels", "levels_near", "levels_between", "count_below"),
-    *("Filling", "Window", "find_gap", "sweep_flux", "half_quantum", "harmonics"),
+    *("Filling", "Window", "find_gap", "sweep_flux"),
     *("edge_states", "compare_continuum", "density_of_states"),
-    *("read_study", "run_study", "write_folder"),
+    *("read_study", "run_study", "write_folder", "read_results"),
     *("RibbonError", "BadInput", "NotCertified", "__version__"),
 }
 

@@ -1,4 +1,4 @@
-"""Verbs whose answer is a table: `levels` and `flux`."""
+"""Verbs whose answer is a table: `levels`, `flux`, `edges` and `continuum`."""
 
 from __future__ import annotations
 
@@ -13,7 +13,7 @@ from ribbon.commands.output import check_target, guard_inputs
 from ribbon.commands.progress import Progress
 from ribbon.errors import BadInput, TooLarge
 
-__all__ = ["flux", "levels"]
+__all__ = ["continuum", "edges", "flux", "levels"]
 
 Out: TypeAlias = Annotated[
     Path | None,
@@ -97,5 +97,79 @@ def flux(
     }
     wanted = ((out, table), (totals, sums))
     files = {path: entry for path, entry in wanted if path is not None and entry is not None}
+    deliver(table, story, files=files, as_json=as_json, quiet=quiet)
+    judge(result, doubt)
+
+
+def edges(
+    file: File,
+    out: Out = None,
+    as_json: AsJson = False,
+    overrides: Set = None,
+    quiet: Quiet = False,
+) -> None:
+    """Print where the states live: edge weight, decay length, edge momentum (CSV)."""
+    check_target(out, not_over=file)
+    ribbon_file = load(file, overrides)
+    guard_inputs(ribbon_file, out)
+    from ribbon.study.run import run_edges
+    from ribbon.study.state_tables import edges_table
+
+    with Progress(quiet=quiet) as progress:
+        result, doubt = known(lambda: run_edges(ribbon_file, progress=progress))
+    case = result.ribbon
+    assert case.edges is not None
+    table = edges_table(case)
+    loops = [
+        {
+            "winding": loop.winding,
+            "sites": loop.sites.size,
+            "length_nm": loop.length,
+            "perimeter_nm": loop.perimeter,
+        }
+        for loop in case.edges.loops
+    ]
+    story = {
+        **heading(result),
+        "flux": case.flux,
+        "within_nm": case.edges.within,
+        "edges": table,
+        "loops": loops,
+        **trust(result),
+    }
+    files = {} if out is None else {out: table}
+    deliver(table, story, files=files, as_json=as_json, quiet=quiet)
+    judge(result, doubt)
+
+
+def continuum(
+    file: File,
+    out: Out = None,
+    as_json: AsJson = False,
+    overrides: Set = None,
+    quiet: Quiet = False,
+) -> None:
+    """Print how far each level is from the continuum formula (CSV)."""
+    check_target(out, not_over=file)
+    ribbon_file = load(file, overrides)
+    guard_inputs(ribbon_file, out)
+    from ribbon.study.run import run_continuum
+    from ribbon.study.state_tables import continuum_table, meshes_table
+
+    with Progress(quiet=quiet) as progress:
+        result, doubt = known(lambda: run_continuum(ribbon_file, progress=progress))
+    case = result.ribbon
+    assert case.continuum is not None
+    table = continuum_table(case)
+    story = {
+        **heading(result),
+        "flux": case.flux,
+        "kind": case.continuum.kind,
+        "zero": case.continuum.zero,
+        "continuum": table,
+        "meshes": meshes_table(case),
+        **trust(result),
+    }
+    files = {} if out is None else {out: table}
     deliver(table, story, files=files, as_json=as_json, quiet=quiet)
     judge(result, doubt)

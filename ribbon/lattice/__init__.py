@@ -1,5 +1,6 @@
 """The lattice room: sites on a strip, the seam, bonds and topology."""
 
+from ribbon.lattice.boundary import EdgeLoop, distance_to_edges, walk_edges
 from ribbon.lattice.definition import Lattice, Line, read_lattice, shelf
 from ribbon.lattice.network import Bonds, Network
 from ribbon.lattice.ring import (
@@ -16,6 +17,7 @@ from ribbon.lattice.topology import Topology, certify_topology
 
 __all__ = [
     "Bonds",
+    "EdgeLoop",
     "Lattice",
     "Line",
     "Network",
@@ -26,6 +28,7 @@ __all__ = [
     "certify_topology",
     "close_strip",
     "closing_sizes",
+    "distance_to_edges",
     "double_cover",
     "fit_strip",
     "holds_together",
@@ -35,4 +38,5 @@ __all__ = [
     "remove_sites",
     "reseam",
     "shelf",
+    "walk_edges",
 ]

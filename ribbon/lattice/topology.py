@@ -20,7 +20,15 @@ from ribbon.lattice.network import Bonds, Network
 from ribbon.lattice.ring import Ring, reseam
 from ribbon.lattice.strip import FloatArray, IntArray
 
-__all__ = ["Topology", "certify_topology", "coordination_numbers"]
+__all__ = [
+    "Topology",
+    "Walks",
+    "certify_topology",
+    "coordination_numbers",
+    "elementary_faces",
+    "laid_out",
+    "walk_bonds",
+]
 
 
 @dataclass(frozen=True, kw_only=True)
@@ -50,12 +58,18 @@ class Topology:
     guaranteed_zero_levels: int | None
 
 
-@dataclass(frozen=True)
-class _Walks:
-    """Closed walks: for each its number of bonds and its total turning in whole turns."""
+@dataclass(frozen=True, eq=False)
+class Walks:
+    """Closed walks of darts: for each its number of bonds and its turning in whole turns.
+
+    ``following`` gives the state after each state, ``label`` the walk that a state belongs to;
+    states are numbered as in `walk_bonds`.
+    """
 
     sizes: IntArray
     turns: IntArray
+    following: IntArray
+    label: IntArray
 
 
 def certify_topology(network: Network) -> Topology:
@@ -75,7 +89,7 @@ def certify_topology(network: Network) -> Topology:
     colours = _two_colours(network.n, first)
     faces = None
     loops = None
-    if network.positions.shape[1] == 2 and _laid_out(first):
+    if network.positions.shape[1] == 2 and laid_out(first):
         faces, loops = _faces_and_loops(network, first)
     count = None if faces is None else int(sum(faces.values()))
     return Topology(
@@ -102,7 +116,7 @@ def coordination_numbers(n: int, bonds: Bonds) -> IntArray:
     return np.bincount(ends, minlength=n)
 
 
-def _laid_out(bonds: Bonds) -> bool:
+def laid_out(bonds: Bonds) -> bool:
     """True where every bond leads somewhere, so that bonds at a site have an order."""
     return bool(np.all(np.any(bonds.displacement, axis=1)))
 
@@ -160,9 +174,8 @@ def _graph(n: int, tail: IntArray, head: IntArray) -> csr_array:
 
 
 def _faces_and_loops(network: Network, first: Bonds) -> tuple[dict[int, int], int]:
-    walks = _walk(network.n, first)
-    elementary = _elementary_sizes(network, walks)
-    is_face = (walks.turns == 1) & np.isin(walks.sizes, elementary)
+    walks = walk_bonds(network.n, first)
+    is_face = elementary_faces(network, walks)
     # every walk is met twice, once from either side
     sizes, counts = np.unique(walks.sizes[is_face], return_counts=True)
     loops = np.count_nonzero(~is_face) // 2
@@ -172,16 +185,20 @@ def _faces_and_loops(network: Network, first: Bonds) -> tuple[dict[int, int], in
     return faces, int(loops + lonely)
 
 
-def _elementary_sizes(network: Network, walks: _Walks) -> IntArray:
-    """Sizes of the faces of the complete ring; of a bare network every left turn is a face."""
+def elementary_faces(network: Network, walks: Walks) -> NDArray[np.bool_]:
+    """Mask of the walks round elementary faces: left turns of a size the complete ring has.
+
+    Of a bare network every left turn is a face.
+    """
+    left = walks.turns == 1
     if not isinstance(network, Ring):
-        return np.unique(walks.sizes[walks.turns == 1])
+        return np.asarray(left)
     whole = reseam(network, complete=True)
-    complete = _walk(whole.n, whole.bonds.select(whole.bonds.shell == 1))
-    return np.unique(complete.sizes[complete.turns == 1])
+    complete = walk_bonds(whole.n, whole.bonds.select(whole.bonds.shell == 1))
+    return np.asarray(left & np.isin(walks.sizes, complete.sizes[complete.turns == 1]))
 
 
-def _walk(n: int, bonds: Bonds) -> _Walks:
+def walk_bonds(n: int, bonds: Bonds) -> Walks:
     """Follow the rotation system on all (dart, frame) states and collect its closed walks.
 
     Dart 2b runs along bond b, dart 2b + 1 against it. State ``dart`` has the frame of its
@@ -189,7 +206,8 @@ def _walk(n: int, bonds: Bonds) -> _Walks:
     """
     m = bonds.m
     if m == 0:
-        return _Walks(np.zeros(0, dtype=np.int64), np.zeros(0, dtype=np.int64))
+        none = np.zeros(0, dtype=np.int64)
+        return Walks(none, none, none, none)
     start, angle = _darts(bonds)
     order = np.lexsort((angle, start))
     degree = np.bincount(start, minlength=n)
@@ -216,7 +234,9 @@ def _walk(n: int, bonds: Bonds) -> _Walks:
         following[here] = onward + 2 * m * arrives_mirrored
         turning[here] = np.pi - inner
     count, label = connected_components(_graph(4 * m, np.arange(4 * m), following), directed=False)
-    return _Walks(
+    return Walks(
+        following=following,
+        label=label.astype(np.int64),
         sizes=np.bincount(label, minlength=count),
         turns=np.rint(np.bincount(label, weights=turning, minlength=count) / (2 * np.pi)).astype(
             np.int64

@@ -10,12 +10,14 @@ if TYPE_CHECKING:
     from ribbon.study.result import Case, Check, StudyResult
     from ribbon.study.ribbonfile import RibbonFile, read_study
     from ribbon.study.run import run_study
+    from ribbon.study.store import read_results
 
 _HOME = {
     "Case": "result",
     "Check": "result",
     "RibbonFile": "ribbonfile",
     "StudyResult": "result",
+    "read_results": "store",
     "read_study": "ribbonfile",
     "run_study": "run",
     "write_folder": "folder",
@@ -26,6 +28,7 @@ __all__ = [
     "Check",
     "RibbonFile",
     "StudyResult",
+    "read_results",
     "read_study",
     "run_study",
     "write_folder",

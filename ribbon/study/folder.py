@@ -13,7 +13,15 @@ from ribbon.lattice import shelf
 from ribbon.study.figures import draw_all, figure_data, to_png, to_svg
 from ribbon.study.report import render_report
 from ribbon.study.ribbonfile import complete_toml
-from ribbon.study.store import write_results
+from ribbon.study.state_tables import (
+    continuum_shift_table,
+    continuum_table,
+    density_table,
+    edges_table,
+    histogram_table,
+    meshes_table,
+)
+from ribbon.study.store import RESULTS, write_results
 from ribbon.study.tables import (
     Table,
     bonds_table,
@@ -67,7 +75,7 @@ def write_folder(result: StudyResult, folder: str | Path, *, replace: bool = Fal
         _write_input(result.file, part)
         _write_tables(result, part / "tables")
         svg = _write_figures(result, part / "figures")
-        write_results(result, part / "results.nc")
+        write_results(result, part / RESULTS)
         _text(part / "report.html", render_report(result, svg))
         _text(part / MARK, _provenance(result))
     return folder
@@ -105,6 +113,11 @@ def _write_tables(result: StudyResult, part: Path) -> None:
     for case in result.cases:
         tables += _tables_of(case)
     tables += [shift_table(result.ribbon, control) for control in result.controls]
+    tables += [
+        continuum_shift_table(result.ribbon, control)
+        for control in result.controls
+        if control.continuum_shift is not None
+    ]
     for table in tables:
         _text(part / f"{table.name}.csv", table.to_csv())
 
@@ -118,6 +131,12 @@ def _tables_of(case: Case) -> list[Table]:
             tables.append(totals_table(case, unit))
     if case.harmonics is not None:
         tables.append(harmonics_table(case, unit))
+    if case.edges is not None:
+        tables.append(edges_table(case))
+    if case.density is not None:
+        tables += [density_table(case), histogram_table(case)]
+    if case.continuum is not None:
+        tables += [continuum_table(case), meshes_table(case)]
     return tables
 
 

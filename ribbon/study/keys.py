@@ -17,6 +17,7 @@ __all__ = [
     "Continuum",
     "Control",
     "Disorder",
+    "Edges",
     "Hopping",
     "Levels",
     "MagneticField",
@@ -258,6 +259,13 @@ class Sweep(KeyTable):
         if not chosen(data, ("electrons", "chemical_potential")):
             data["electrons"] = data.get("electrons", "neutral")
         return data
+
+
+class Edges(KeyTable):
+    """What counts as near to an edge."""
+
+    within_nm: Annotated[float, Field(gt=0, le=1e9)] | None = None
+    """reach of an edge in nm; left out, two nearest-neighbour bonds"""
 
 
 class Continuum(KeyTable):

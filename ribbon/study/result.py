@@ -7,7 +7,17 @@ from dataclasses import dataclass
 from typing import TYPE_CHECKING, Any, Literal
 
 if TYPE_CHECKING:
-    from ribbon.analysis import FluxResponse, Gap, HalfQuantum, Harmonics, Levels
+    from ribbon.analysis import (
+        ContinuumComparison,
+        ContinuumShift,
+        Density,
+        EdgeStates,
+        FluxResponse,
+        Gap,
+        HalfQuantum,
+        Harmonics,
+        Levels,
+    )
     from ribbon.hopping import Hamiltonian
     from ribbon.lattice import Network, Topology
     from ribbon.study.ribbonfile import RibbonFile
@@ -42,7 +52,9 @@ class Case:
     is the flux through this ring for one flux quantum through the ribbon (2 for the double
     cover). ``electrons`` is the number that fills the levels, ``spin`` how many fit in one.
     ``other_gap`` is the gap with the other orbital sign, where there is one.
-    ``doubts`` says what could not be certified.
+    ``doubts`` says what could not be certified. ``edges``, ``density`` and ``continuum`` are
+    None where they were not asked for or do not exist; ``continuum_shift`` stands with a
+    control and pairs the ribbon's levels with its own.
     """
 
     name: CaseName
@@ -61,6 +73,10 @@ class Case:
     half: HalfQuantum | None = None
     flux_scale: float = 1.0
     doubts: tuple[str, ...] = ()
+    edges: EdgeStates | None = None
+    density: Density | None = None
+    continuum: ContinuumComparison | None = None
+    continuum_shift: ContinuumShift | None = None
 
 
 @dataclass(frozen=True, kw_only=True, eq=False)

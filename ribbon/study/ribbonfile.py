@@ -18,6 +18,7 @@ from ribbon.study.keys import (
     Continuum,
     Control,
     Disorder,
+    Edges,
     Hopping,
     Levels,
     MagneticField,
@@ -57,6 +58,7 @@ class RibbonFile(KeyTable):
     disorder: Disorder = Field(default_factory=Disorder)
     levels: Levels = Field(default_factory=Levels)
     sweep: Sweep = Field(default_factory=Sweep)
+    edges: Edges = Field(default_factory=Edges)
     continuum: Continuum = Field(default_factory=Continuum)
     control: Control = Field(default_factory=Control)
 

@@ -1,4 +1,4 @@
-"""Results as NetCDF: one group a case, named dimensions and units."""
+"""Results as NetCDF: one group a case, named dimensions and units, and back again."""
 
 from __future__ import annotations
 
@@ -8,12 +8,16 @@ from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from ribbon.errors import BadInput
+
 if TYPE_CHECKING:
     import xarray as xr
 
     from ribbon.study.result import Case, StudyResult
 
-__all__ = ["case_dataset", "write_results"]
+__all__ = ["RESULTS", "case_dataset", "read_results", "write_results"]
+
+RESULTS = "results.nc"
 
 
 def write_results(result: StudyResult, path: Path) -> None:
@@ -29,6 +33,40 @@ def write_results(result: StudyResult, path: Path) -> None:
     path.write_bytes(stream.getvalue())
 
 
+def read_results(path: str | Path) -> xr.DataTree:
+    """Open the results of a study again: one group a case, its name as the study gives it.
+
+    ``path`` is ``results.nc`` or the study folder that holds it. Everything is loaded, so that
+    the file is free again; states come back complex, as ``state`` with the dimensions ``site``
+    and ``level_found``. Raises `BadInput` where there are no results that a study wrote.
+
+    >>> read_results("nowhere")
+    Traceback (most recent call last):
+    ribbon.errors.BadInput: nowhere: there is no such file; give a study folder or its results.nc
+    """
+    import xarray as xr
+
+    place = Path(path)
+    place = place / RESULTS if place.is_dir() else place
+    if not place.is_file():
+        raise BadInput(f"{place}: there is no such file; give a study folder or its {RESULTS}")
+    try:
+        tree = xr.load_datatree(place, engine="h5netcdf")
+    except (OSError, ValueError, KeyError) as problem:
+        raise BadInput(f"{place}: is no results file of a study ({problem})") from None
+    if "ribbon" not in tree.children or "energy" not in tree["ribbon"]:
+        raise BadInput(f"{place}: is a NetCDF file, but not the results of a study")
+    return tree.map_over_datasets(_with_complex_states)
+
+
+def _with_complex_states(data: xr.Dataset) -> xr.Dataset:
+    """Real and imaginary parts of the states made one variable again."""
+    if "state_real" not in data:
+        return data
+    state = data["state_real"] + 1j * data["state_imaginary"]
+    return data.drop_vars(["state_real", "state_imaginary"]).assign(state=state)
+
+
 def case_dataset(case: Case) -> xr.Dataset:
     """What is known of one case, as a labelled dataset; states as real and imaginary parts."""
     import xarray as xr
@@ -40,6 +78,9 @@ def case_dataset(case: Case) -> xr.Dataset:
         **_bonds(case),
         **_levels(case),
         **_response(case),
+        **_edges(case),
+        **_density(case),
+        **_continuum(case),
     }
     attributes = {
         "label": case.label,
@@ -117,3 +158,59 @@ def _response(case: Case) -> dict[str, Any]:
         shared = response.totals.shared.astype(np.int8)
         found["total_shared"] = (("flux_point",), shared)
     return found
+
+
+def _edges(case: Case) -> dict[str, Any]:
+    found = case.edges
+    if found is None:
+        return {}
+    rows = ("level_found",)
+    variables: dict[str, Any] = {
+        "edge_weight": (rows, found.edge_weight, {"within_nm": found.within}),
+        "hole_weight": (rows, found.hole_weight),
+        "decay_length": (rows, found.decay_length, {"units": "nm"}),
+        "participation": (rows, found.participation),
+        "edge_momentum": (rows, found.edge_momentum, {"units": "2 pi / L"}),
+        "edge_share": (rows, found.edge_share),
+    }
+    for number, loop in enumerate(loop for loop in found.loops if loop.is_edge):
+        variables[f"edge{number}_site"] = ((f"edge{number}",), loop.sites)
+        variables[f"edge{number}_along"] = ((f"edge{number}",), loop.along, {"units": "nm"})
+    return variables
+
+
+def _density(case: Case) -> dict[str, Any]:
+    found = case.density
+    if found is None:
+        return {}
+    unit = {"units": found.unit}
+    return {
+        "density_energy": (("density_point",), found.energies, unit),
+        "density": (
+            ("density_point",),
+            found.density,
+            {"units": f"1/{found.unit}", "broadening": found.broadening},
+        ),
+        "levels_below": (("density_point",), found.integrated),
+        "histogram_edge": (("histogram_edge_point",), found.edges, unit),
+        "histogram_count": (("histogram_bin",), found.counts),
+    }
+
+
+def _continuum(case: Case) -> dict[str, Any]:
+    found = case.continuum
+    if found is None:
+        return {}
+    unit, rows = {"units": found.unit}, ("level_compared",)
+    return {
+        "compared_level": (rows, found.level),
+        "compared_energy": (("mesh", *rows), found.meshes, unit),
+        "mesh_spacing": (("mesh",), found.spacings, {"units": "nm"}),
+        "continuum_energy": (rows, found.continuum, {**unit, "zero": found.zero}),
+        "extrapolated_energy": (rows, found.extrapolated, unit),
+        "relative_error": (rows, found.relative_error),
+        "continuum_order": (rows, found.order),
+        "continuum_wave": (rows, found.modes.wave, {"units": "2 pi / L"}),
+        "continuum_band": (rows, found.modes.band),
+        "continuum_holds": (rows, found.holds.astype(np.int8)),
+    }
