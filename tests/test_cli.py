@@ -76,7 +76,7 @@ def table(text: str) -> dict[str, np.ndarray]:
     return {
         name: np.array([float(row[name] or "nan") for row in rows])
         for name in rows[0]
-        if name != "shared"
+        if name not in {"shared", "holds"}
     }
 
 
@@ -101,7 +101,8 @@ def test_help_lists_every_verb(run):
     """All verbs, each with one line that is not cut short."""
     status, out, _ = run("--help")
     assert status == 0
-    for verb in ("study", "describe", "levels", "flux", "export", "lattices", "new"):
+    verbs = ("study", "describe", "levels", "flux", "edges", "continuum")
+    for verb in (*verbs, "export", "lattices", "new"):
         assert f"\n  {verb} " in out
     assert "..." not in out.partition("Commands:")[2]
 
@@ -154,7 +155,7 @@ def test_flux_tables_hold_the_exact_currents(run, here):
     np.testing.assert_allclose(totals["current"][1], whole, rtol=0, atol=1e-12)
 
 
-@pytest.mark.parametrize("verb", ["levels", "flux"])
+@pytest.mark.parametrize("verb", ["levels", "flux", "edges", "continuum"])
 def test_out_puts_the_same_table_into_a_file(run, here, verb):
     """With --out stdout stays empty, and the file holds what stdout would."""
     _, printed, _ = run(verb, "ring.toml")
@@ -595,3 +596,66 @@ def test_levels_without_a_certified_gap_are_written_all_the_same(
     assert told["gap"]["gap"] is None
     assert "not certified" in err
     assert "the frontier holds" in str(told["checks"])
+
+
+WIDE = ["--set", "ribbon.rows=5", "--set", "ribbon.length=8", "--set", "levels.all=true"]
+
+
+def test_edges_prints_the_promised_columns(run: Any) -> None:
+    """Weights lie between 0 and 1, and participation between 1 and the number of sites."""
+    status, out, _ = run("edges", "ring.toml", *WIDE)
+    found = table(out)
+    assert status == 0
+    assert list(found)[:4] == ["level", "energy", "edge_weight", "decay_length"]
+    assert found["level"].size == 40
+    assert np.all((found["edge_weight"] > 0) & (found["edge_weight"] <= 1 + 1e-12))
+    assert np.all((found["participation"] >= 1 - 1e-9) & (found["participation"] <= 40 + 1e-9))
+
+
+def test_edges_as_json_tell_the_loops(run: Any) -> None:
+    """A one-sided ribbon has one edge that runs round twice."""
+    status, out, _ = run("edges", "ring.toml", *WIDE, "--json")
+    told = json.loads(out)
+    assert status == 0
+    assert [loop["winding"] for loop in told["loops"]] == [2]
+    # the square lattice has a spacing of 1 nm unless the file says another
+    assert told["loops"][0]["length_nm"] == pytest.approx(2 * 8 * 1.0, abs=1e-12)
+    assert told["edges"][0]["level"] == 0
+    assert all(check["passed"] for check in told["checks"])
+
+
+def test_edges_need_states_that_fit(run: Any, monkeypatch: pytest.MonkeyPatch) -> None:
+    """Where the states would be too large one sentence says what would fit."""
+    monkeypatch.setattr("ribbon.study.cases.MOST_KEPT", 100)
+    status, out, err = run("edges", "ring.toml", *WIDE)
+    assert (status, out) == (2, "")
+    assert "levels.count" in err
+
+
+def test_continuum_prints_levels_of_the_matrix(run: Any) -> None:
+    """Its energies are those of `levels`; the error is counted from the band bottom."""
+    status, out, _ = run("continuum", "ring.toml", *WIDE)
+    found = table(out)
+    assert status == 0
+    assert list(found)[:5] == ["level", "energy", "continuum", "extrapolated", "relative_error"]
+    _, levels, _ = run("levels", "ring.toml", *WIDE)
+    np.testing.assert_array_equal(found["energy"], table(levels)["energy"])
+    bottom = -4 * 2.5
+    error = (found["energy"] - found["continuum"]) / (found["continuum"] - bottom)
+    np.testing.assert_allclose(found["relative_error"], error, rtol=0, atol=1e-12)
+
+
+@pytest.mark.parametrize(
+    ("change", "word"),
+    [
+        ("ribbon.lattice=triangular", "no continuum formula"),
+        ("disorder.strength=1.0", "clean rings"),
+        ("hopping.shells=[2.5, 0.1]", "first neighbours only"),
+    ],
+)
+def test_continuum_refuses_what_has_no_formula(run: Any, change: str, word: str) -> None:
+    """One sentence says why."""
+    status, out, err = run("continuum", "ring.toml", *WIDE, "--set", change)
+    assert (status, out) == (2, "")
+    assert word in err
+    assert len(err.splitlines()) == 1

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import csv
+import itertools
 import math
 import subprocess
 import sys
@@ -129,3 +130,76 @@ def test_gap_against_width_follows_the_closed_form(tmp_path: Path) -> None:
             expected = 2.7 * 4 * math.sin(math.pi / (2 * halves))
             assert float(row["one_sided_s_eV"]) == pytest.approx(expected, abs=1e-4)
             assert float(row["one_sided_pz_eV"]) == pytest.approx(0.0, abs=1e-4)
+
+
+def test_the_armchair_gap_hangs_on_the_sign() -> None:
+    """Width 3p + 2: "s" has min|E| = 2 sin(pi/2P), P = 2 * length half periods, "pz" none
+    (references 4.6, verified by brute force there; gapless and gapped: de Souza & Furtado,
+    arXiv:1707.06361).
+    """
+    case = result_of("armchair-sign").ribbon
+    assert case.gap.gap == pytest.approx(4 * math.sin(math.pi / 32), abs=1e-12)
+    assert case.other_gap is not None
+    assert case.other_gap.open_shell
+    assert case.density is not None
+    assert case.density.complete
+    whole = np.trapezoid(case.density.density, case.density.energies)
+    assert whole == pytest.approx(80, abs=1e-6)
+
+
+def test_edge_momenta_of_the_wide_zigzag_ribbon() -> None:
+    """One edge of length 2L: wave numbers spaced by pi/L, those of the plain ring by 2 pi/L; the
+    amplitude falls by |2 cos(ks/2)| a row (Wakabayashi et al., Sci. Technol. Adv. Mater. 11,
+    054504 (2010), recalled from memory).
+    """
+    result = result_of("wide-zigzag-edges")
+    spacings = []
+    for case in result.cases:
+        assert case.edges is not None
+        deep = (case.edges.edge_weight > 0.9) & (np.abs(case.edges.edge_momentum) < 29)
+        momentum = np.abs(case.edges.edge_momentum[deep])
+        spacings.append(float(np.diff(np.unique(momentum.round(6))).min()))
+        # k s = 2 pi momentum / length, and one row is 1.5 bonds high
+        per_row = np.abs(2 * np.cos(np.pi * momentum / 60))
+        expected = -1.5 * 0.142 / np.log(per_row)
+        assert case.edges.decay_length[deep] == pytest.approx(expected, abs=1e-6)
+    assert spacings == [0.5, 1.0]
+
+
+def test_the_mesh_of_a_ring_against_the_continuum() -> None:
+    """L = 6 W with 19 sites across: errors 2.05e-3 of the ground level and 1.87e-3 of n = +-1,
+    of order 2 (references 5.1, computed there with two scripts); values in GaAs units.
+    """
+    result = result_of("continuum-of-a-ring")
+    found = result.ribbon.continuum
+    assert found is not None
+    assert found.relative_error[:3] == pytest.approx([-2.05e-3, -1.87e-3, -1.87e-3], abs=5e-6)
+    assert found.order == pytest.approx(2, abs=0.05)
+    kinetic = constants.hbar**2 / (2 * 0.067 * constants.m_e) / constants.e * 1e21  # meV nm^2
+    exact = np.array([9.869604, 10.966227, 10.966227]) * kinetic / 40.0**2
+    assert found.extrapolated[:3] == pytest.approx(exact, rel=1e-5)
+    shift = result.controls[0].continuum_shift
+    assert shift is not None
+    assert np.abs(shift.lattice_part).max() < 0.05 * np.abs(shift.shift).max()
+
+
+def test_gap_against_length_follows_the_published_belts(tmp_path: Path) -> None:
+    """Half the gap of the linear chain with one hexagon less, 0.61803, 0.41421, 0.29496 for 3, 4,
+    5 hexagons, falling smoothly; cyclic belts jump (references 1.7; Andre et al., Int. J. Quantum
+    Chem. 84, 607 (2001), volume recalled from memory).
+    """
+    subprocess.run(
+        [sys.executable, str(EXAMPLES / "gap_against_length.py")],
+        check=True,
+        cwd=tmp_path,
+        timeout=120,
+    )
+    text = (tmp_path / "gap-against-length.csv").read_text(encoding="utf-8")
+    rows = list(csv.DictReader(text.splitlines()))
+    one_sided = [float(row["one_sided"]) for row in rows]
+    assert one_sided[:3] == pytest.approx([0.61803, 0.41421, 0.29496], abs=5e-6)
+    assert all(a > b for a, b in itertools.pairwise(one_sided))
+    for row, before in zip(rows[1:], rows[:-1], strict=True):
+        assert float(row["one_sided"]) == pytest.approx(float(before["linear"]) / 2, abs=1e-9)
+    assert [float(row["cyclic"]) < 1e-9 for row in rows] == [n % 2 == 0 for n in range(3, 41)]
+    assert (tmp_path / "gap-against-length.svg").stat().st_size > 5000

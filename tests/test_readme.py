@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import re
 from pathlib import Path
+from typing import Any
 
 import pytest
 
@@ -25,10 +26,15 @@ def test_the_first_runnable_line_comes_early() -> None:
 
 def test_python_listing_prints_what_the_text_says(capsys: pytest.CaptureFixture[str]) -> None:
     """The listing is run and its output compared with the sentence below it."""
-    (listing,) = blocks("python")
-    exec(compile(listing, "README", "exec"), {})  # our own README, not text from outside
+    listing, more = blocks("python")
+    names: dict[str, Any] = {}
+    exec(compile(listing, "README", "exec"), names)  # our own README, not text from outside
     printed = capsys.readouterr().out.splitlines()
     assert printed == ["s 0.392", "pz 0.0", "1 edge"]
+    exec(compile(more, "README", "exec"), names)
+    *_, below = capsys.readouterr().out.splitlines()
+    assert float(below) == pytest.approx(80)
+    assert f"# {float(below):.0f} sites" in more
     for line in printed:
         assert f"`{line}`" in README
 

@@ -39,7 +39,8 @@ class Density:
     """Density of states on a grid of energies, shape (p,), and as a histogram.
 
     ``density`` is in levels per unit of energy, each level a Gaussian of standard deviation
-    ``broadening``; ``integrated`` is the number of levels below, exact for that shape.
+    ``broadening``; ``integrated`` is the number of levels below, exact for that shape. Where a
+    grid of 20,001 points cannot resolve the broadening, ``density`` is the mean over each step.
     ``counts`` (shape (b,)) are the levels between neighbouring ``edges`` (shape (b + 1,)).
     ``complete`` is False where only a window of levels was known: then both hold inside it only.
     """
@@ -116,6 +117,10 @@ def _of_levels(
         raise BadInput("a density of states needs levels; this window holds none")
     grid = _grid(levels, broadening) if energies is None else np.array(energies, float)
     density, under = _broadened(levels, grid, broadening)
+    step = float(grid[1] - grid[0]) if energies is None else 0.0
+    if step > broadening / 2:  # too coarse to sample: the mean over each step keeps the integral
+        _, ends = _broadened(levels, np.append(grid - step / 2, grid[-1] + step / 2), broadening)
+        density = np.diff(ends) / step
     low, high = float(levels[0]), float(levels[-1])
     bins = int(np.clip(np.ceil((high - low) / broadening) + 1, 1, MOST_POINTS))
     middle, half = (low + high) / 2, max(bins * broadening, 1.001 * (high - low)) / 2

@@ -108,7 +108,10 @@ def edges(
     overrides: Set = None,
     quiet: Quiet = False,
 ) -> None:
-    """Print where the states live: edge weight, decay length, edge momentum (CSV)."""
+    """Print how the states live at the edges (CSV).
+
+    Edge weight, decay length, participation and edge momentum of every level.
+    """
     check_target(out, not_over=file)
     ribbon_file = load(file, overrides)
     guard_inputs(ribbon_file, out)

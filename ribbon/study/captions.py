@@ -7,6 +7,13 @@ from typing import TYPE_CHECKING
 
 import numpy as np
 
+from ribbon.study.findings import (
+    at_the_edge,
+    percent,
+    spacing_for_percent,
+    spread,
+    strongest_edge_state,
+)
 from ribbon.study.numbers import quantity
 from ribbon.study.wording import conventions, gap_text, peak_current, subtitle
 
@@ -33,6 +40,11 @@ def caption(name: str, result: StudyResult) -> Caption:
         "flux": _flux,
         "currents": _currents,
         "shift": _shift,
+        "space": _space,
+        "edge-state": _edge_state,
+        "edges": _edges,
+        "density": _density,
+        "continuum": _continuum,
     }.get(name)
     return Caption(name, "", f"Figure {name}") if write is None else write(result)
 
@@ -113,4 +125,87 @@ def _shift(result: StudyResult) -> Caption:
         "the gap (the order in the complete spectrum, not quantum numbers). A control with "
         "twice the sites has two levels for each; their mean is taken.",
         "Levels of ribbon and control side by side, and the difference for each level.",
+    )
+
+
+def _space(result: StudyResult) -> Caption:
+    topology, ring = result.ribbon.topology, result.ribbon.hamiltonian.ring
+    loops = topology.boundary_loops
+    edges = "" if loops is None else f" Heavy lines: the {loops} closed edge{'s' * (loops != 1)}."
+    sides = "one side" if not topology.orientable else "two sides"
+    turn = "" if ring is None else f", turned evenly by {ring.half_twists} × 180° on the way round"
+    return Caption(
+        "The ribbon in space",
+        f"The same sites and bonds on a band with a circular midline{turn}. Its two faces have "
+        f"two tints; the surface has {sides}.{edges} The band is for the eye: lengths of bonds "
+        "and angles are not those of a molecule, and no number of this study depends on it.",
+        f"The ribbon as a closed band in space with {sides}.",
+    )
+
+
+def _edge_state(result: StudyResult) -> Caption:
+    case = result.ribbon
+    assert case.edges is not None
+    best = strongest_edge_state(case.edges)
+    energy = quantity(float(case.edges.energy[best]), case.levels.unit)
+    weight = percent(float(case.edges.edge_weight[best]))
+    loops = [loop for loop in case.edges.loops if loop.is_edge]
+    long = f", {loops[0].length:.4g} nm" if loops else ""
+    twice = " (twice round)" if loops and loops[0].winding == 2 else ""
+    return Caption(
+        "The strongest edge state",
+        f"Level {case.edges.level[best]} at {energy}: {weight} of its probability lies within "
+        f"{case.edges.within:.3g} nm of an edge. Flat, in space, and along the unrolled edge"
+        f"{long}{twice}, where the sign of the orbital is carried along at every crossing of the "
+        "seam; last, the wave numbers along the edge. Densities of a degenerate shell are "
+        "averaged over it.",
+        f"Density of level {case.edges.level[best]} on the ribbon and along its edge; {weight} of "
+        "it is near an edge.",
+    )
+
+
+def _edges(result: StudyResult) -> Caption:
+    beside = "; ".join(
+        f"{c.label}: {at_the_edge(c.edges)} of {c.edges.level.size}"
+        for c in result.cases
+        if c.edges is not None
+    )
+    return Caption(
+        "Edge states against momentum",
+        "Energy against the strongest wave number along the unrolled edge; the area of a mark is "
+        "the weight at the edge. A one-sided ribbon has one edge of length 2L and wave numbers "
+        f"spaced by π/L, a plain one 2π/L. Levels with more than half at the edge: {beside}.",
+        f"Energy against edge momentum. Levels at the edge: {beside}.",
+    )
+
+
+def _density(result: StudyResult) -> Caption:
+    case = result.ribbon
+    assert case.density is not None
+    found = case.density
+    whole = "the complete spectrum" if found.complete else f"the {found.levels:,} levels found"
+    return Caption(
+        "Density of states",
+        f"Levels per energy and site from {whole}, each a Gaussian of standard deviation "
+        f"{quantity(found.broadening, found.unit)} (levels.broadening), spin not counted; below, "
+        "the part of all levels that lies under an energy.",
+        f"Density of states of the ribbon beside its controls, from {whole}.",
+    )
+
+
+def _continuum(result: StudyResult) -> Caption:
+    case = result.ribbon
+    assert case.continuum is not None
+    found = case.continuum
+    formula = "Schrödinger" if found.kind == "square" else "Dirac"
+    spacing, given = spacing_for_percent(found), found.kind != "square"
+    fine = "" if given or np.isnan(spacing) else f" A spacing of {spacing:.3g} nm gives 1 %."
+    count = int(np.count_nonzero(found.holds))
+    return Caption(
+        "Lattice and continuum",
+        f"Levels beside the {formula} formula with hard walls, paired by quantum numbers, and "
+        f"their relative error on {found.spacings.size} meshes of the same ring (width, "
+        f"circumference and closure kept). {count} of {found.level.size} levels lie where the "
+        f"formula is meant to hold, |k|a up to 0.5: {spread(found)}.{fine}",
+        f"Relative error of levels against lattice spacing for the {formula} formula.",
     )

@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING
 import numpy as np
 
 from ribbon.analysis.levels import tolerance
+from ribbon.study.findings import state_sentences
 from ribbon.study.numbers import quantity
 from ribbon.study.wording import brim, energy_text, filling_text, gap_size, peak_current
 
@@ -27,6 +28,7 @@ def meaning(result: StudyResult) -> tuple[str, ...]:
     if result.ribbon.other_gap is not None:
         sentences.append(_sign_sentence(result))
     sentences += _current_sentences(result)
+    sentences += state_sentences(result)
     sentences.append(_trust_sentence(result))
     return tuple(sentences)
 

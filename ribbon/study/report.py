@@ -15,6 +15,7 @@ from ribbon.study.captions import caption
 from ribbon.study.meaning import meaning
 from ribbon.study.numbers import number
 from ribbon.study.ribbonfile import complete_toml
+from ribbon.study.state_tables import continuum_shift_table, continuum_table, edges_table
 from ribbon.study.tables import (
     Table,
     checks_table,
@@ -131,6 +132,23 @@ def _tables(result: StudyResult) -> Iterator[_Shown]:
         yield _near_gap(levels_table(case, unit), "level", filled)
     for case in result.cases:
         yield from _response_tables(case, unit)
+    for case in result.cases:
+        filled = case.electrons / case.spin - 0.5
+        if case.edges is not None:
+            yield _near_gap(edges_table(case), "level", filled)
+        if case.continuum is not None and case.continuum.holds.any():
+            yield _shown(_where_it_holds(case))
+    for control in result.controls:
+        if control.continuum_shift is not None:
+            yield _shown(continuum_shift_table(result.ribbon, control))
+
+
+def _where_it_holds(case: Case) -> Table:
+    """Rows of the continuum table for which the formula is meant, and there are any."""
+    table = continuum_table(case)
+    chosen = np.asarray(table.columns["holds"])
+    columns = {name: np.asarray(values)[chosen] for name, values in table.columns.items()}
+    return Table(table.name, columns, table.units, table.about)
 
 
 def _response_tables(case: Case, unit: str) -> Iterator[_Shown]:

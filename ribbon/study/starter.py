@@ -63,6 +63,9 @@ electrons = "neutral"  # one electron a site, or a number
 spin = 2  # electrons that a level holds: 1 or 2
 temperature = 0.0  # K; needs eV or meV
 
+[edges]
+# within_nm = {within:.4g}  # reach of an edge in nm; left out, two nearest-neighbour bonds
+
 [continuum]
 refinements = 3  # meshes finer than this one, for the comparison with the continuum
 
@@ -96,6 +99,7 @@ def starter(lattice: str | Path = "honeycomb-zigzag", *, path: str | Path = "rib
         half_twists=half_twists,
         orbital=toml_value("pz" if carbon else "s"),
         spacing=definition.spacing,
+        within=2 * definition.spacing,
         unit=toml_value("eV" if carbon else "t"),
         hopping=2.7 if carbon else 1.0,
         near=FLAT_AVOIDED.get(definition.name, 0.0),

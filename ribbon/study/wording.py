@@ -9,6 +9,7 @@ import numpy as np
 
 from ribbon.analysis.levels import tolerance
 from ribbon.hopping.units import current_factor
+from ribbon.study.findings import Fact, state_facts
 from ribbon.study.numbers import quantity
 
 if TYPE_CHECKING:
@@ -16,7 +17,6 @@ if TYPE_CHECKING:
     from ribbon.study.result import Case, StudyResult
 
 __all__ = [
-    "Fact",
     "Peak",
     "brim",
     "comparison",
@@ -32,15 +32,6 @@ __all__ = [
 
 NOISE = 1e-13
 """A current or difference below this part of the largest hopping slope is rounding."""
-
-
-@dataclass(frozen=True)
-class Fact:
-    """One number that a person would quote: what it is, the number, and a word on it."""
-
-    label: str
-    value: str
-    detail: str = ""
 
 
 @dataclass(frozen=True)
@@ -112,6 +103,7 @@ def facts(result: StudyResult) -> tuple[Fact, ...]:
         found.append(Fact("Largest current", value, where))
     if case.half is not None:
         found.append(_half_fact(case))
+    found += state_facts(case)
     found += [_edge_fact(case, result.file.ribbon.half_twists), _size_fact(case)]
     passed = sum(check.passed for check in result.checks)
     verdict = "all passed" if passed == len(result.checks) else "see the checks below"

@@ -147,7 +147,7 @@ def test_the_input_is_complete(made: Path) -> None:
     assert table["disorder"] == {"strength": 0.5, "vacancies": 0.1, "seed": 3}
     assert set(table) == {
         *("title", "ribbon", "hopping", "field", "disorder", "levels", "sweep"),
-        *("continuum", "control"),
+        *("edges", "continuum", "control"),
     }
 
 

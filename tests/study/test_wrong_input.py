@@ -192,6 +192,9 @@ VALUES = [
     said("spin three", ribbon(sweep="spin = 3"), "sweep.spin = 3 must be 1 or 2", "electrons"),
     said("cold", ribbon(sweep="temperature = -1"), "sweep.temperature = -1 must be 0 or more"),
     said("warm", ribbon(hopping='unit = "t"', sweep="temperature = 4"), "eV or meV", '"t" has no'),
+    said("no reach", ribbon(edges="within_nm = 0"), "edges.within_nm = 0 must be more than 0"),
+    said("reach in words", ribbon(edges='within_nm = "1"'), "edges.within_nm"),
+    said("edge unknown", ribbon(edges="within = 1.0"), "edges.within", "within_nm"),
     said("refined backwards", ribbon(continuum="refinements = -1"), "refinements = -1 must be 0"),
     said(
         "refined forever", ribbon(continuum="refinements = 40"), "refinements = 40 must be at most"
@@ -439,7 +442,7 @@ def test_a_file_that_cannot_be_read(name, words, here, capsys):
         (["levels", "study.toml", "more"], ["more"]),
         (["levels", "study.toml", "--jsn"], ["--jsn", "--json"]),
         (["levels", "study.toml", "--set"], ["--set"]),
-        (["edges", "study.toml"], ["edges"]),
+        (["edgs", "study.toml"], ["edgs", "edges"]),
         (["--nothing"], ["--nothing"]),
     ],
 )
