@@ -122,7 +122,7 @@ def _given(network: Network, term: SiteEnergy) -> FloatArray:
         return _by_place(network, term)
     values = np.asarray(term, dtype=np.float64)
     if values.ndim == 0:
-        return np.full(network.n, float(values))
+        return np.broadcast_to(np.float64(values), (network.n,))  # one number, whatever the size
     if values.shape != (network.n,):
         raise BadInput(
             f"site energies have the shape {values.shape}; expected one for each of the "

@@ -8,6 +8,7 @@ which for a threading flux is exp(2 pi i phi (x_j - x_i) / L) in the uniform gau
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from functools import cached_property
 from typing import Any, Literal
@@ -18,6 +19,7 @@ from scipy.sparse import csr_array
 
 from ribbon.errors import BadInput
 from ribbon.hopping.amplitudes import Hopping, resolve_site_energies
+from ribbon.hopping.template import Template, find_template
 from ribbon.lattice import Network, Ring
 
 __all__ = ["Gauge", "Hamiltonian", "assemble"]
@@ -33,13 +35,34 @@ class Hamiltonian:
     """A network with its hopping; ``matrix`` gives the sparse matrix at a flux.
 
     ``amplitudes`` holds <tail|H|head> of every bond at zero flux, seam factor included, and
-    ``site_energies`` the diagonal, disorder included; both in ``hopping.unit``.
+    ``site_energies`` the diagonal, disorder included; both in ``hopping.unit``. One made by
+    `assemble` on a ring as it was laid computes its amplitudes when they are first asked for.
     """
 
     network: Network
     hopping: Hopping
     amplitudes: AnyArray
     site_energies: FloatArray
+
+    def __getattr__(self, name: str) -> Any:
+        """Amplitudes of every bond, when they are first asked for."""
+        if name != "amplitudes" or "network" not in self.__dict__:
+            raise AttributeError(f"{type(self).__name__!r} object has no attribute {name!r}")
+        value = _amplitudes(self.network, self.hopping)
+        object.__setattr__(self, name, value)
+        return value
+
+    @property
+    def is_regular(self) -> bool:
+        """True where bonds and amplitudes are those of the ring as it was laid, none edited."""
+        return "_regular" in self.__dict__
+
+    @cached_property
+    def _template(self) -> Template | None:
+        """One period of the matrix, or None where it does not repeat."""
+        if not self.is_regular or self.ring is None:
+            return None
+        return find_template(self.ring, self.hopping.shells, diagonal=bool(self._diagonal.size))
 
     @property
     def n(self) -> int:
@@ -59,19 +82,23 @@ class Hamiltonian:
     @cached_property
     def scale(self) -> float:
         """An upper bound of the spectrum's absolute value (largest absolute row sum)."""
-        bonds = self.network.bonds
-        weight = np.abs(self.amplitudes)
-        rows = np.bincount(bonds.tail, weights=weight, minlength=self.n)
-        rows += np.bincount(bonds.head, weights=weight, minlength=self.n)
-        return float(np.max(rows + np.abs(self.site_energies), initial=0.0)) or 1.0
+        rows = self._row_sums + np.abs(self.site_energies)
+        return float(np.max(rows, initial=0.0)) or 1.0
 
     @cached_property
     def bond_scale(self) -> float:
         """Largest sum of the bonds at one site; the bound of the spectrum where there is none."""
+        return float(np.max(self._row_sums, initial=0.0)) or self.scale
+
+    @cached_property
+    def _row_sums(self) -> FloatArray:
+        """Sum of the absolute amplitudes at every site."""
+        if self._template is not None:
+            return self._template.row_sums()
         bonds, weight = self.network.bonds, np.abs(self.amplitudes)
         rows = np.bincount(bonds.tail, weights=weight, minlength=self.n)
         rows += np.bincount(bonds.head, weights=weight, minlength=self.n)
-        return float(np.max(rows, initial=0.0)) or self.scale
+        return np.asarray(rows, dtype=np.float64)
 
     @cached_property
     def site_turns(self) -> FloatArray:
@@ -98,11 +125,56 @@ class Hamiltonian:
         not finite, or a flux through a network that is not a ring.
         """
         data = self.data(flux, gauge=gauge)
-        indptr, indices = self._pattern.indptr, self._pattern.indices
+        indices, indptr = self._structure
         return csr_array((data, indices, indptr), shape=(self.n, self.n))
+
+    @cached_property
+    def _structure(self) -> tuple[AnyArray, AnyArray]:
+        """``indices`` and ``indptr``, the same for every flux and gauge."""
+        if self._template is not None:
+            return self._template.structure()
+        return self._pattern.indices, self._pattern.indptr
+
+    def tunable(
+        self, *, gauge: Literal["uniform", "seam"] = "seam"
+    ) -> Callable[[float], csr_array]:
+        """A function of the flux that rewrites one complex matrix in place and returns it.
+
+        For sweeps: in the seam gauge only the entries that cross the seam are touched, so that a
+        new flux costs microseconds whatever the size. The matrix of an earlier call changes with
+        every later one; copy it to keep it.
+
+        >>> from ribbon.lattice import close_strip, lay_strip
+        >>> strip = lay_strip("square", rows=2, length=9)
+        >>> ring = assemble(close_strip(strip, half_twists=0), Hopping())
+        >>> tuned = ring.tunable()
+        >>> abs(tuned(0.3) - ring.matrix(0.3, gauge="seam")).max() < 1e-15
+        np.True_
+        """
+        matrix = self.matrix(0.25, gauge=gauge)
+        data = matrix.data.astype(np.complex128, copy=False)
+        matrix = csr_array((data, matrix.indices, matrix.indptr), shape=matrix.shape)
+        template, wound = self._template, None
+        if template is not None and gauge == "seam":
+            wound = template.wound()
+
+        def tune(flux: float) -> csr_array:
+            if wound is not None:
+                place, amplitude, winding = wound
+                matrix.data[place] = amplitude * np.exp(2j * np.pi * flux * winding)
+            elif template is not None:
+                template.fill(matrix.data, flux, self.site_energies, seam=False)
+            else:
+                matrix.data[:] = self.data(flux, gauge=gauge)
+            return matrix
+
+        return tune
 
     def data(self, flux: float = 0.0, *, gauge: Gauge = "uniform") -> AnyArray:
         """Data array of `matrix` alone; the structure never changes with flux or gauge."""
+        self._check(flux, gauge)
+        if self._template is not None and isinstance(gauge, str):
+            return self._from_template(flux, gauge, slope=False)
         bonds = self.amplitudes * self._phases(flux, gauge)
         values = np.concatenate([bonds, bonds.conj(), self.site_energies[self._diagonal]])
         pattern = self._pattern
@@ -113,6 +185,11 @@ class Hamiltonian:
 
     def slope_matrix(self, flux: float, *, gauge: Gauge = "uniform") -> csr_array:
         """Derivative of `matrix` with respect to the flux in flux quanta, same structure."""
+        self._check(flux, gauge)
+        if self._template is not None and isinstance(gauge, str):
+            data = self._from_template(flux, gauge, slope=True)
+            indices, indptr = self._structure
+            return csr_array((data, indices, indptr), shape=(self.n, self.n))
         bonds = self.amplitudes * self._phases(flux, gauge)
         bonds = 2j * np.pi * self.bond_turns(gauge) * bonds
         values = np.concatenate([bonds, bonds.conj(), np.zeros(self._diagonal.size)])
@@ -120,19 +197,29 @@ class Hamiltonian:
         data = np.add.reduceat(values[pattern.order], pattern.starts) if values.size else values
         return csr_array((data, pattern.indices, pattern.indptr), shape=(self.n, self.n))
 
-    def _phases(self, flux: float, gauge: Gauge) -> AnyArray:
+    def _from_template(self, flux: float, gauge: str, *, slope: bool) -> AnyArray:
+        template, seam = self._template, gauge == "seam"
+        assert template is not None
+        real = not slope and (flux == 0 or (seam and float(2 * flux).is_integer()))
+        out = np.empty(template.nnz, dtype=np.float64 if real else np.complex128)
+        return template.fill(out, flux, self.site_energies, seam=seam, slope=slope)
+
+    def _check(self, flux: float, gauge: Gauge) -> None:
+        """Refuse a flux or gauge that means nothing."""
         if not np.isfinite(flux):
             raise BadInput(f"field.flux = {flux} must be a finite number of flux quanta")
         if flux and self.ring is None:
             raise BadInput("a threading flux needs a ring; this network is not closed round one")
         if isinstance(gauge, str) and gauge not in {"uniform", "seam"}:
             raise BadInput(f'field.gauge = {gauge!r} must be "uniform" or "seam"')
-        given = None if isinstance(gauge, str) else np.asarray(gauge, dtype=np.float64)
-        if given is not None and given.shape != (self.n,):
+        if not isinstance(gauge, str) and np.shape(gauge) != (self.n,):
             raise BadInput(
-                f"the gauge has the shape {given.shape}; expected one phase for each of the "
+                f"the gauge has the shape {np.shape(gauge)}; expected one phase for each of the "
                 f"{self.n} sites"
             )
+
+    def _phases(self, flux: float, gauge: Gauge) -> AnyArray:
+        given = None if isinstance(gauge, str) else np.asarray(gauge, dtype=np.float64)
         turns = flux * self.bond_turns(gauge)
         half = np.rint(2 * turns)
         if given is None and np.array_equal(half, 2 * turns):
@@ -190,19 +277,30 @@ def assemble(network: Network, hopping: Hopping) -> Hamiltonian:
            [-1.,  0., -1.],
            [-1., -1.,  0.]])
     """
-    bonds = network.bonds
-    shells = network.shells if isinstance(network, Ring) else int(np.max(bonds.shell, initial=1))
+    if isinstance(network, Ring):
+        shells = network.shells
+    else:
+        shells = int(np.max(network.bonds.shell, initial=1))
     if len(hopping.shells) != shells:
         raise BadInput(
             f"hopping.shells names {len(hopping.shells)} amplitudes, but the network was closed "
             f"with shells = {shells}"
         )
+    energies = resolve_site_energies(network, hopping)
+    energies.setflags(write=False)
+    found = object.__new__(Hamiltonian)
+    for name, value in (("network", network), ("hopping", hopping), ("site_energies", energies)):
+        object.__setattr__(found, name, value)
+    if isinstance(network, Ring) and network.is_laid:
+        object.__setattr__(found, "_regular", True)
+    return found
+
+
+def _amplitudes(network: Network, hopping: Hopping) -> FloatArray:
+    """<tail|H|head> of every bond at zero flux."""
+    bonds = network.bonds
     amplitudes = -np.array(hopping.shells)[bonds.shell - 1]
     if isinstance(network, Ring):
         amplitudes = amplitudes * network.closure.factor(bonds.winding)
     amplitudes.setflags(write=False)
-    energies = resolve_site_energies(network, hopping)
-    energies.setflags(write=False)
-    return Hamiltonian(
-        network=network, hopping=hopping, amplitudes=amplitudes, site_energies=energies
-    )
+    return amplitudes

@@ -8,7 +8,7 @@ itself or the same partner more than once, are multigraphs and come out right.
 from __future__ import annotations
 
 from dataclasses import dataclass, replace
-from typing import TypeVar
+from typing import Any, TypeVar
 
 import numpy as np
 from numpy.typing import ArrayLike
@@ -56,6 +56,9 @@ class Ring(Network):
     Sites keep the order of the strip whatever the place of the ``seam``: a seam moved on by s
     slices represents the sites of those slices by their images beyond the far end.
     ``kept`` gives each site's number in the complete ring where sites were removed.
+
+    A ring made by `close_strip` computes its positions and bonds when they are first asked for:
+    a matrix of 10 million sites is assembled from one period, without either.
     """
 
     strip: Strip
@@ -63,6 +66,26 @@ class Ring(Network):
     closure: Seam
     seam: int = 0
     kept: IntArray | None = None
+
+    def __getattr__(self, name: str) -> Any:
+        """Positions and bonds of a laid ring, when they are first asked for."""
+        if name not in {"positions", "bonds"} or "strip" not in self.__dict__:
+            raise AttributeError(f"{type(self).__name__!r} object has no attribute {name!r}")
+        moved = _moved(self.strip, self.seam)
+        late = _positions if name == "positions" else _bonds
+        value = late(self, moved)
+        object.__setattr__(self, name, value)
+        return value
+
+    @property
+    def n(self) -> int:
+        """Number of sites."""
+        return self.strip.n if self.kept is None else self.kept.size
+
+    @property
+    def is_laid(self) -> bool:
+        """True where every bond is the one that the strip and its seam give, none edited."""
+        return "_laid" in self.__dict__
 
     @property
     def half_twists(self) -> int:
@@ -110,8 +133,22 @@ def close_strip(
     (10, 15)
     """
     closure = make_seam(strip, half_twists, orbital)
-    moved = _moved(strip, seam)
-    cell = cell_bonds(strip, shells)
+    if seam:
+        _moved(strip, seam)
+    cell_bonds(strip, shells)  # refuses shells that the lattice does not name
+    ring = object.__new__(Ring)
+    for name, value in {
+        **{"strip": strip, "shells": shells, "closure": closure, "seam": seam},
+        **{"kept": None, "_laid": True},
+    }.items():
+        object.__setattr__(ring, name, value)
+    return ring
+
+
+def _bonds(ring: Ring, moved: BoolArray) -> Bonds:
+    """Every bond of a laid ring."""
+    strip, closure = ring.strip, ring.closure
+    cell = cell_bonds(strip, ring.shells)
     tail, head_number, kind = _replicate(strip, cell)
     head, winding = fold(strip, closure, head_number)
     displacement = cell.displacement[kind] * strip.spacing
@@ -121,21 +158,13 @@ def close_strip(
         winding = winding + moved[tail].astype(np.int64) - moved[head]
         if closure.flips:
             displacement[moved[tail], 1] *= -1
-    bonds = Bonds(
+    return Bonds(
         tail=tail,
         head=head,
         displacement=displacement,
         winding=winding,
         shell=cell.shell[kind],
         mirrored=(winding % 2 == 1) if closure.flips else np.zeros(tail.size, dtype=bool),
-    )
-    return Ring(
-        positions=_represent(strip, closure, moved),
-        bonds=bonds,
-        strip=strip,
-        shells=shells,
-        closure=closure,
-        seam=seam,
     )
 
 
@@ -279,6 +308,8 @@ def _replicate(strip: Strip, cell: CellBonds) -> tuple[IntArray, IntArray, IntAr
 
 def _moved(strip: Strip, seam: int) -> BoolArray:
     """Mask of the sites that lie in the first ``seam`` slices."""
+    if seam == 0:
+        return np.zeros(strip.n, dtype=bool)
     starts = np.concatenate([[True], np.diff(strip.positions[:, 0]) > TOLERANCE * strip.spacing])
     slices = np.cumsum(starts) - 1
     if not 0 <= seam <= slices[-1] + 1:
@@ -286,11 +317,13 @@ def _moved(strip: Strip, seam: int) -> BoolArray:
     return slices < seam
 
 
-def _represent(strip: Strip, closure: Seam, moved: BoolArray) -> FloatArray:
+def _positions(ring: Ring, moved: BoolArray) -> FloatArray:
+    """Places of the sites of a laid ring; those of moved slices by their images."""
+    strip, closure = ring.strip, ring.closure
     if not moved.any():
         return strip.positions
     positions = strip.positions.copy()
     positions[moved, 0] += strip.circumference
     if closure.flips:
         positions[moved, 1] *= -1
-    return positions
+    return frozen(positions)
