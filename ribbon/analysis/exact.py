@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import replace
 from weakref import WeakKeyDictionary
 
 import numpy as np
 import scipy.linalg
 
+from ribbon.analysis.blocks import Blocks, Spectrum
 from ribbon.analysis.levels import (
     AnyArray,
     Certificate,
@@ -17,7 +19,7 @@ from ribbon.analysis.levels import (
     shell_edges,
     tolerance,
 )
-from ribbon.analysis.symmetry import Blocks, find_blocks
+from ribbon.analysis.symmetry import find_blocks
 from ribbon.errors import TooLarge
 from ribbon.hopping import Hamiltonian
 
@@ -29,10 +31,13 @@ __all__ = [
     "dense_bytes",
     "finish",
     "fits_dense",
-    "part_of",
+    "part_by_dense",
+    "part_by_symmetry",
     "resolve_slopes",
     "to_uniform",
 ]
+
+Choose = Callable[[FloatArray], tuple[int, int, tuple[float, float]]]
 
 DENSE_BYTES = 2 * 1024**3
 
@@ -58,30 +63,59 @@ def fits_dense(hamiltonian: Hamiltonian, flux: float, *, states: bool) -> bool:
     return dense_bytes(hamiltonian.n, complex_=complex_, states=states) <= DENSE_BYTES
 
 
-def by_symmetry(hamiltonian: Hamiltonian, flux: float, *, states: bool) -> Levels:
+def by_symmetry(hamiltonian: Hamiltonian, flux: float, *, slopes: bool = False) -> Levels:
     """The complete spectrum of a clean ring from its blocks."""
     blocks = blocks_of(hamiltonian)
     assert blocks is not None
-    spectrum = blocks.spectrum(flux)
-    levels = Levels(
-        energies=spectrum.energies,
+    found = blocks.spectrum(flux) if slopes else blocks.labelled(flux)
+    return Levels(
+        energies=found.energies,
         index=np.arange(hamiltonian.n),
-        certificate=_whole(hamiltonian, "symmetry", spectrum.energies),
+        certificate=_whole(hamiltonian, "symmetry", found.energies),
         flux=flux,
         unit=hamiltonian.unit,
-        momentum=spectrum.momentum,
-        parity=spectrum.parity,
-        slopes=spectrum.slopes,
+        momentum=found.momentum,
+        parity=found.parity,
+        slopes=found.slopes if isinstance(found, Spectrum) else None,
+    )
+
+
+def part_by_symmetry(
+    hamiltonian: Hamiltonian, flux: float, choose: Choose, *, states: bool
+) -> Levels:
+    """A window of the complete spectrum of a clean ring; its states from the blocks they need.
+
+    ``choose`` gives the first and last position in the spectrum, and the edges of the window.
+    """
+    blocks = blocks_of(hamiltonian)
+    assert blocks is not None
+    found = blocks.labelled(flux)
+    first, last, edges = choose(found.energies)
+    here = slice(first, last)
+    levels = Levels(
+        energies=found.energies[here],
+        index=np.arange(first, last),
+        certificate=replace(
+            _whole(hamiltonian, "symmetry", found.energies),
+            lower=edges[0],
+            upper=edges[1],
+            count_lower=first,
+            count_upper=last,
+            found=last - first,
+        ),
+        flux=flux,
+        unit=hamiltonian.unit,
+        momentum=found.momentum[here],
+        parity=found.parity[here],
     )
     if not states:
         return levels
-    return _with_states(hamiltonian, levels, blocks.states(spectrum, np.arange(hamiltonian.n)))
-
-
-def _with_states(hamiltonian: Hamiltonian, levels: Levels, states: AnyArray) -> Levels:
-    matrix = hamiltonian.matrix(levels.flux)
-    residual = np.linalg.norm(matrix @ states - states * levels.energies, axis=0)
-    return replace(levels, states=states, residual=float(np.max(residual, initial=0.0)))
+    vectors, slopes = blocks.states(found, flux, np.arange(first, last))
+    matrix = hamiltonian.matrix(flux)
+    residual = np.linalg.norm(matrix @ vectors - vectors * levels.energies, axis=0)
+    return replace(
+        levels, states=vectors, slopes=slopes, residual=float(np.max(residual, initial=0.0))
+    )
 
 
 def by_dense(hamiltonian: Hamiltonian, flux: float, *, states: bool) -> Levels:
@@ -176,22 +210,8 @@ def _whole(hamiltonian: Hamiltonian, method: str, energies: FloatArray) -> Certi
     )
 
 
-def part_of(
-    hamiltonian: Hamiltonian,
-    whole: Levels,
-    first: int,
-    last: int,
-    *,
-    states: bool,
-    edges: tuple[float, float],
-) -> Levels:
-    """A window of a complete spectrum, with states where they are asked for."""
-    part = whole.part(first, last, lower=edges[0], upper=edges[1])
-    if not states:
-        return part
-    blocks = blocks_of(hamiltonian) if whole.certificate.method == "symmetry" else None
-    if blocks is not None:
-        spectrum = blocks.spectrum(whole.flux)
-        return _with_states(hamiltonian, part, blocks.states(spectrum, np.arange(first, last)))
-    dense = by_dense(hamiltonian, whole.flux, states=True)
-    return dense.part(first, last, lower=edges[0], upper=edges[1])
+def part_by_dense(hamiltonian: Hamiltonian, flux: float, choose: Choose, *, states: bool) -> Levels:
+    """A window of a complete dense spectrum, with states where they are asked for."""
+    whole = by_dense(hamiltonian, flux, states=states)
+    first, last, edges = choose(whole.energies)
+    return whole.part(first, last, lower=edges[0], upper=edges[1])

@@ -9,12 +9,12 @@ import numpy as np
 import scipy.linalg
 from numpy.typing import ArrayLike, NDArray
 
+from ribbon.analysis.blocks import Blocks, Spectrum
 from ribbon.analysis.exact import blocks_of, fits_dense, resolve_slopes, to_uniform
 from ribbon.analysis.filling import Filled, Filling, fill
 from ribbon.analysis.joining import Follower, follow_bands
 from ribbon.analysis.levels import AnyArray, FloatArray, IntArray, Levels, finest, tolerance
 from ribbon.analysis.spectrum import all_levels, levels_between, levels_near, nearest_shells
-from ribbon.analysis.symmetry import Blocks, Spectrum
 from ribbon.errors import BadInput
 from ribbon.hopping import Hamiltonian
 

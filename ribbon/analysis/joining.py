@@ -10,8 +10,8 @@ from __future__ import annotations
 import numpy as np
 from scipy.optimize import linear_sum_assignment
 
+from ribbon.analysis.blocks import Spectrum
 from ribbon.analysis.levels import AnyArray, FloatArray, IntArray
-from ribbon.analysis.symmetry import Spectrum
 
 __all__ = ["Follower", "follow_bands", "follow_states"]
 

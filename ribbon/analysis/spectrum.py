@@ -8,12 +8,20 @@ counts as standing on it.
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import Literal
 
 import numpy as np
 
 from ribbon.analysis.certified import MOST_LEVELS, bracket, counted_edge, edge_with_count, window
-from ribbon.analysis.exact import blocks_of, by_dense, by_symmetry, part_of
+from ribbon.analysis.exact import (
+    Choose,
+    blocks_of,
+    by_dense,
+    by_symmetry,
+    part_by_dense,
+    part_by_symmetry,
+)
 from ribbon.analysis.levels import FloatArray, Levels, shell_edges, tolerance
 from ribbon.analysis.symmetry import why_no_blocks
 from ribbon.errors import BadInput, TooLarge
@@ -35,12 +43,17 @@ DENSE_WINDOW = 600
 
 
 def all_levels(
-    hamiltonian: Hamiltonian, *, flux: float = 0.0, states: bool = False, method: Method = "auto"
+    hamiltonian: Hamiltonian,
+    *,
+    flux: float = 0.0,
+    states: bool = False,
+    slopes: bool = False,
+    method: Method = "auto",
 ) -> Levels:
     """The complete spectrum at a flux.
 
     Clean rings are split into momentum and parity blocks and carry these labels; others are
-    diagonalised dense. ``states`` adds the states and, for dense ones, the slopes. Raises
+    diagonalised dense. ``slopes`` adds dE/d(flux), ``states`` the states and the slopes. Raises
     `TooLarge` where the dense matrix would not fit, naming what would.
 
     >>> from ribbon.lattice import Network
@@ -50,10 +63,13 @@ def all_levels(
     [-2.0, -1.0, -1.0, 1.0, 1.0, 2.0]
     """
     chosen = _choose(hamiltonian, method, fallback="dense")
+    if chosen == "symmetry" and states:
+        return part_by_symmetry(hamiltonian, flux, _everything, states=True)
     if chosen == "symmetry":
-        return by_symmetry(hamiltonian, flux, states=states)
+        return by_symmetry(hamiltonian, flux, slopes=slopes)
     if chosen == "dense":
-        return by_dense(hamiltonian, flux, states=states)
+        found = by_dense(hamiltonian, flux, states=states or slopes)
+        return found if states else replace(found, states=None)
     raise BadInput('a complete spectrum takes the method "symmetry" or "dense", not "sparse"')
 
 
@@ -73,10 +89,16 @@ def levels_between(
     """
     if not (np.isfinite(lower) and np.isfinite(upper) and lower < upper):
         raise BadInput(f"levels.between = [{lower}, {upper}] must be two ascending numbers")
-    if _choose(hamiltonian, method, fallback="window") != "sparse":
-        whole = all_levels(hamiltonian, flux=flux, method=_exact(hamiltonian, method))
-        first, last = _inside(whole.energies, lower, upper, tolerance(hamiltonian))
-        return part_of(hamiltonian, whole, first, last, states=states, edges=(lower, upper))
+    chosen = _choose(hamiltonian, method, fallback="window")
+    if chosen != "sparse":
+        same = tolerance(hamiltonian)
+        return _part(
+            hamiltonian,
+            flux,
+            lambda energies: (*_inside(energies, lower, upper, same), (lower, upper)),
+            states=states,
+            symmetry=chosen == "symmetry",
+        )
     low = counted_edge(hamiltonian, lower, flux, outward=-1)
     high = counted_edge(hamiltonian, upper, flux, outward=1)
     return window(hamiltonian, low, high, flux, states=states)
@@ -100,11 +122,16 @@ def levels_near(
         raise BadInput(f"levels.near = {energy} must be a finite energy")
     if count != int(count) or count < 1:
         raise BadInput(f"levels.count = {count} must be a whole number, 1 or more")
-    exact = _choose(hamiltonian, method, fallback="window") != "sparse"
-    if exact or count + 2 >= hamiltonian.n:
-        whole = all_levels(hamiltonian, flux=flux, method=_exact(hamiltonian, method))
-        first, last, edges = nearest_shells(whole.energies, energy, count, tolerance(hamiltonian))
-        return part_of(hamiltonian, whole, first, last, states=states, edges=edges)
+    chosen = _choose(hamiltonian, method, fallback="window")
+    if chosen != "sparse" or count + 2 >= hamiltonian.n:
+        same = tolerance(hamiltonian)
+        return _part(
+            hamiltonian,
+            flux,
+            lambda energies: nearest_shells(energies, energy, count, same),
+            states=states,
+            symmetry=chosen == "symmetry",
+        )
     if count > MOST_LEVELS:
         raise TooLarge(
             f"levels.count = {count:,} without symmetry is more than {MOST_LEVELS:,}; ask for "
@@ -177,9 +204,16 @@ def _choose(hamiltonian: Hamiltonian, method: Method, *, fallback: str) -> str:
     return fallback
 
 
-def _exact(hamiltonian: Hamiltonian, method: Method) -> Method:
-    """Method of the complete spectrum behind a window."""
-    return "auto" if method in {"auto", "sparse"} else method
+def _part(
+    hamiltonian: Hamiltonian, flux: float, choose: Choose, *, states: bool, symmetry: bool
+) -> Levels:
+    """A window of a complete spectrum."""
+    way = part_by_symmetry if symmetry else part_by_dense
+    return way(hamiltonian, flux, choose, states=states)
+
+
+def _everything(energies: FloatArray) -> tuple[int, int, tuple[float, float]]:
+    return 0, energies.size, (float(energies[0]), float(energies[-1]))
 
 
 def _inside(energies: FloatArray, lower: float, upper: float, same: float) -> tuple[int, int]:

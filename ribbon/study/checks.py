@@ -124,7 +124,7 @@ def check_spectrum(hamiltonian: Hamiltonian, flux: float) -> Iterator[Check]:
     blocks = blocks_of(hamiltonian)
     if blocks is None and hamiltonian.n > SMALL_COVER:
         return
-    levels = all_levels(hamiltonian, flux=flux, states=blocks is None)
+    levels = all_levels(hamiltonian, flux=flux, slopes=True)
     matrix = hamiltonian.matrix(flux)
     scale = hamiltonian.scale
     trace = abs(levels.energies.sum() - matrix.diagonal().sum().real)
