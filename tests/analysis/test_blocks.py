@@ -59,14 +59,13 @@ def test_values_labels_and_vectors_agree(case: Case, flux: float, offset: float)
         ("honeycomb-armchair", 5, True),
         ("lieb", 3, True),
         ("square", 4, False),
-        ("kagome", 3, False),
     ],
 )
 def test_blocks_fall_into_halves_where_sublattices_survive(
     lattice: str, rows: int, halved: bool
 ) -> None:
     """The armchair flip keeps the sublattices apart; on the square lattice a block holds the hop
-    along the ring on its diagonal, and kagome has triangles.
+    along the ring on its diagonal.
     """
     blocks = blocks_of(ring_of(Case(lattice, rows, 5, 1, -1)))
     assert blocks is not None
