@@ -30,6 +30,7 @@ from ribbon.hopping import Hamiltonian
 __all__ = [
     "Method",
     "all_levels",
+    "choice",
     "count_below",
     "levels_at",
     "levels_between",
@@ -186,6 +187,31 @@ def nearest_shells(
     first = int(edges[np.searchsorted(edges, near[0], side="right") - 1])
     last = int(edges[np.searchsorted(edges, near[-1], side="right")])
     return first, last, (float(energies[first]), float(energies[last - 1]))
+
+
+def choice(
+    hamiltonian: Hamiltonian, *, whole: bool = False, method: Method = "auto"
+) -> tuple[str, str]:
+    """The method that a request gets, and why, in a few words.
+
+    ``whole`` asks for the complete spectrum, else for a window of it.
+
+    >>> from ribbon.lattice import close_strip, lay_strip
+    >>> from ribbon.hopping import Hopping, assemble
+    >>> ring = close_strip(lay_strip("square", rows=3, length=9), half_twists=0)
+    >>> choice(assemble(ring, Hopping()))
+    ('symmetry', 'a clean ring: momentum and parity are quantum numbers')
+    """
+    chosen = _choose(hamiltonian, method, fallback="dense" if whole else "window")
+    if method != "auto":
+        return chosen, "as asked for"
+    if chosen == "symmetry":
+        return chosen, "a clean ring: momentum and parity are quantum numbers"
+    why = why_no_blocks(hamiltonian)
+    if chosen == "dense":
+        size = "" if whole else f", and {hamiltonian.n:,} sites are few"
+        return chosen, f"{why}{size}"
+    return chosen, f"{why}, and {hamiltonian.n:,} sites are too many for a dense matrix to pay"
 
 
 def _choose(hamiltonian: Hamiltonian, method: Method, *, fallback: str) -> str:

@@ -5,6 +5,7 @@ from __future__ import annotations
 from dataclasses import asdict
 from typing import TYPE_CHECKING, Any
 
+from ribbon.analysis.spectrum import choice
 from ribbon.lattice import certify_topology, closing_sizes
 from ribbon.study.build import build
 from ribbon.study.forecast import forecast_levels, forecast_sweep
@@ -49,6 +50,7 @@ def describe(file: RibbonFile) -> dict[str, Any]:
         "sizes_that_close": [f"rows = {rows}, length = {length:g}" for rows, length in near],
         "forecast": {
             "levels_method": levels.method,
+            "levels_method_because": choice(hamiltonian, whole=plan.window.all)[1],
             "levels_seconds": levels.seconds,
             "levels_bytes": levels.bytes,
             "sweep_method": sweep.method,

@@ -1,11 +1,19 @@
-"""What a job will cost, said before it starts; rough, from a few measured constants."""
+"""What a job will cost, said before it starts: measured constants, scaled to this machine.
+
+A short calibration (a small dense diagonalisation, some 20 ms, once) says how fast the machine
+is now against the one the constants were measured on.
+"""
 
 from __future__ import annotations
 
 import os
+import time
 from dataclasses import dataclass
+from functools import lru_cache
 
 import numpy as np
+import scipy.linalg
+from threadpoolctl import threadpool_limits
 
 from ribbon.analysis import Window
 from ribbon.analysis.exact import blocks_of, dense_bytes, fits_dense
@@ -21,9 +29,12 @@ __all__ = [
     "forecast_sweep",
     "levels_wanted",
     "refuse_if_too_large",
+    "slowness",
 ]
 
-# seconds on one core of 2020s hardware, measured with the benchmark of this project
+# seconds on the machine where the calibration took CALIBRATED, measured with the benchmark
+CALIBRATED = 5.0e-3
+CALIBRATION_SIZE = 160
 DENSE_STATES = 4.0e-10
 DENSE_VALUES = 1.5e-10
 BLOCK = 2.0e-9
@@ -51,6 +62,21 @@ class Forecast:
         if self.bytes >= 1024**3:
             return f"{self.bytes / 1024**3:.1f} GiB"
         return f"{max(1, round(self.bytes / 1024**2))} MiB"
+
+
+@lru_cache(maxsize=1)
+def slowness() -> float:
+    """How many times slower this machine is than the one the constants were measured on."""
+    draw = np.random.default_rng(0).standard_normal((2, CALIBRATION_SIZE, CALIBRATION_SIZE))
+    matrix = draw[0] + 1j * draw[1]
+    matrix = matrix + matrix.conj().T
+    times = []
+    with threadpool_limits(limits=1, user_api="blas"):
+        for _ in range(3):
+            start = time.perf_counter()
+            scipy.linalg.eigh(matrix, driver="evd", check_finite=False)
+            times.append(time.perf_counter() - start)
+    return min(times) / CALIBRATED
 
 
 def available_bytes() -> int:
@@ -89,12 +115,13 @@ def forecast_levels(hamiltonian: Hamiltonian, window: Window, flux: float) -> Fo
             for s in blocks.sectors
         )
         store = sum(16 * 4 * s.momenta.size * s.size**2 for s in blocks.sectors)
+        seconds *= slowness()
         return Forecast(method="symmetry", seconds=seconds, bytes=store + 2 * kept)
     if window.all and fits_dense(hamiltonian, flux, states=True):
         return _dense(n, DENSE_STATES)
     if n <= 600:
         return _dense(n, DENSE_VALUES)
-    seconds = SPARSE_SITE * n * (1 + (window.count or 40) / 40)
+    seconds = slowness() * SPARSE_SITE * n * (1 + (window.count or 40) / 40)
     held = n * (1500 + 32 * min(window.count, n))
     return Forecast(method="sparse", seconds=seconds, bytes=held)
 
@@ -116,4 +143,4 @@ def forecast_sweep(hamiltonian: Hamiltonian, fluxes: FloatArray, window: Window)
 
 def _dense(n: int, cost: float) -> Forecast:
     need = dense_bytes(n, complex_=True, states=True)
-    return Forecast(method="dense", seconds=cost * n**3, bytes=need)
+    return Forecast(method="dense", seconds=slowness() * cost * n**3, bytes=need)

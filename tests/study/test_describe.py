@@ -17,6 +17,7 @@ from brute import PERIOD, Case, closes, steps
 
 from ribbon.errors import BadInput
 from ribbon.study import build as build_module
+from ribbon.study import forecast as forecast_module
 from ribbon.study.build import build
 from ribbon.study.describe import describe
 from ribbon.study.ribbonfile import RibbonFile
@@ -188,3 +189,30 @@ def test_a_ribbon_that_cannot_be_built_is_refused(monkeypatch: pytest.MonkeyPatc
     monkeypatch.setattr(build_module, "available_bytes", lambda: 1_000_000)
     with pytest.raises(BadInput, match="sites need about"):
         describe(file_of(Case("square", 10, 1000, 1)))
+
+
+def test_the_forecast_is_calibrated_on_this_machine(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Twice as slow a machine is told twice the time; memory stays."""
+    one = describe(file_of(Case("square", 5, 40, 1, -1)))["forecast"]
+    slow = forecast_module.slowness()
+    assert slow > 0
+    monkeypatch.setattr(forecast_module, "slowness", lambda: 2 * slow)
+    two = describe(file_of(Case("square", 5, 40, 1, -1)))["forecast"]
+    assert two["levels_seconds"] == pytest.approx(2 * one["levels_seconds"])
+    assert two["sweep_seconds"] == pytest.approx(2 * one["sweep_seconds"])
+    assert two["levels_bytes"] == one["levels_bytes"]
+
+
+@pytest.mark.parametrize(
+    ("more", "method", "word"),
+    [
+        ({}, "symmetry", "momentum and parity"),
+        ({"disorder": {"strength": 1.0}}, "dense", "few"),
+        ({"disorder": {"vacancies": 0.1}, "levels": {"all": True}}, "dense", "removed"),
+    ],
+)
+def test_the_method_is_told_with_its_reason(more: dict[str, Any], method: str, word: str) -> None:
+    """Which way the levels will be found, and why."""
+    told = describe(file_of(Case("square", 5, 40, 1, -1), **more))["forecast"]
+    assert told["levels_method"] == method
+    assert word in told["levels_method_because"]
