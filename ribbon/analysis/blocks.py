@@ -8,9 +8,7 @@ to each other, singular values of a matrix of half the size give the levels.
 from __future__ import annotations
 
 import itertools
-import os
 from collections.abc import Callable, Iterator
-from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
 from functools import cached_property
 
@@ -21,26 +19,16 @@ from scipy.sparse.csgraph import connected_components
 
 from ribbon.analysis.levels import AnyArray, FloatArray, IntArray, shell_edges, tolerance
 from ribbon.hopping import Hamiltonian
+from ribbon.hopping.cores import share_out
 from ribbon.lattice import Ring
 from ribbon.lattice.ring import CellBonds
 
-__all__ = ["Blocks", "Labelled", "Sector", "Solved", "Spectrum", "workers"]
+__all__ = ["Blocks", "Labelled", "Sector", "Solved", "Spectrum"]
 
 BATCH = 1 << 20
 """Matrix elements solved at a time."""
 WORTH_THREADS = 1 << 18
 """Fewer elements in all than this are solved on one core."""
-
-
-def workers() -> int:
-    """Cores used for batches: all that this process may use, or RIBBON_THREADS."""
-    wanted = os.environ.get("RIBBON_THREADS", "")
-    if wanted.isdigit() and int(wanted) > 0:
-        return int(wanted)
-    try:
-        return len(os.sched_getaffinity(0))
-    except AttributeError:  # not every system tells
-        return os.cpu_count() or 1
 
 
 @dataclass(frozen=True, kw_only=True, eq=False)
@@ -203,12 +191,8 @@ class Blocks:
         self, work: Callable[[tuple[int, slice]], FloatArray], jobs: list[tuple[int, slice]]
     ) -> list[FloatArray]:
         total = sum(sector.momenta.size * sector.size**2 for sector in self.sectors)
-        cores = workers()
-        if cores == 1 or total < WORTH_THREADS:
-            return [work(job) for job in jobs]
         _ = self._templates, self._diagonals, self._halves  # found once, not by every thread
-        with ThreadPoolExecutor(cores) as pool:
-            return list(pool.map(work, jobs))
+        return share_out(work, jobs, worth=total >= WORTH_THREADS)
 
     def labelled(self, flux: float) -> Labelled:
         """The complete spectrum at a flux with its labels."""

@@ -7,6 +7,7 @@ array over the bonds.
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from functools import cached_property
 from typing import Any
@@ -14,11 +15,15 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from ribbon.hopping.cores import share_out
 from ribbon.lattice import Ring
 from ribbon.lattice.ring import cell_bonds
 from ribbon.lattice.seam import fold
 
 __all__ = ["Template", "find_template"]
+
+PART = 1 << 21
+"""Entries filled by one core at a time."""
 
 FloatArray = NDArray[np.float64]
 IntArray = NDArray[np.int64]
@@ -77,25 +82,34 @@ class Template:
         before = self.head.counts.size
         start = np.arange(before, before + self.periods * self.size, self.size, dtype=kind)
         block = indices[self._middle].reshape(self.periods, -1)
-        np.add(start[:, None], self.body.column.astype(kind)[None, :], out=block)
+        column = self.body.column.astype(kind)[None, :]
+        self._by_parts(lambda part: np.add(start[part, None], column, out=block[part]))
         indptr[0] = 0
         indptr[1 : before + 1] = np.cumsum(self.head.counts)
         width = self.body.column.size
         ahead = self._middle.start + width * np.arange(self.periods, dtype=kind)
         rows = indptr[before + 1 : before + 1 + self.periods * self.size]
         ends = np.cumsum(self.body.counts).astype(kind)
-        np.add(ahead[:, None], ends[None, :], out=rows.reshape(self.periods, -1))
+        ending = rows.reshape(self.periods, -1)
+        self._by_parts(lambda part: np.add(ahead[part, None], ends[None, :], out=ending[part]))
         indptr[before + 1 + self.periods * self.size :] = self._middle.stop + np.cumsum(
             self.tail.counts
         )
         return indices, indptr
+
+    def _by_parts(self, work: Callable[[slice], object]) -> None:
+        """Do the work on stretches of periods, on all cores where there are many."""
+        step = max(1, -(-PART // self.body.column.size))
+        parts = [slice(i, i + step) for i in range(0, self.periods, step)]
+        share_out(work, parts)
 
     def fill(
         self, out: AnyArray, flux: float, energies: FloatArray, *, seam: bool, slope: bool = False
     ) -> AnyArray:
         """Write the entries at a flux into ``out``, or their derivative by the flux."""
         block = out[self._middle].reshape(self.periods, -1)
-        block[:] = entries(self.body, flux, seam=seam, slope=slope)
+        period = entries(self.body, flux, seam=seam, slope=slope)
+        self._by_parts(lambda part: np.copyto(block[part], period))
         self.fill_ends(out, flux, seam=seam, slope=slope)
         if self.body.diagonal.size:
             inner = slice(self.head.counts.size, self.n - self.tail.counts.size)

@@ -17,6 +17,7 @@ from ribbon.analysis import all_levels, levels_near
 from ribbon.analysis import blocks as blocks_module
 from ribbon.analysis.exact import blocks_of
 from ribbon.hopping import Hamiltonian, Hopping, assemble
+from ribbon.hopping.cores import workers
 from ribbon.lattice import close_strip, lay_strip
 
 LEVEL = 1e-10
@@ -81,17 +82,17 @@ def test_batches_and_cores_change_no_bit(monkeypatch: pytest.MonkeyPatch) -> Non
     monkeypatch.setattr(blocks_module, "WORTH_THREADS", 1)
     for cores in ("1", "2", "3"):
         monkeypatch.setenv("RIBBON_THREADS", cores)
-        assert blocks_module.workers() == int(cores)
+        assert workers() == int(cores)
         np.testing.assert_array_equal(blocks.energies(0.2), plain)
 
 
 def test_cores_are_those_of_this_process(monkeypatch: pytest.MonkeyPatch) -> None:
     """Words in the variable count for nothing, and systems that do not tell are asked again."""
     monkeypatch.setenv("RIBBON_THREADS", "many")
-    assert blocks_module.workers() >= 1
+    assert workers() >= 1
     monkeypatch.delattr("os.sched_getaffinity", raising=False)
     monkeypatch.setattr("os.cpu_count", lambda: None)
-    assert blocks_module.workers() == 1
+    assert workers() == 1
 
 
 def test_states_come_from_the_blocks_that_hold_them(monkeypatch: pytest.MonkeyPatch) -> None:
