@@ -280,7 +280,8 @@ def test_notes_go_to_stderr(run):
     assert out.startswith("level,energy")
     assert err.startswith("note: length_nm = 16.2: ")
     told = json.loads(run("describe", "ring.toml", "--json", *size)[1])
-    size_note, gap_note = (line.removeprefix("note: ") for line in err.splitlines())
+    size_note, way_note, gap_note = (line.removeprefix("note: ") for line in err.splitlines())
+    assert way_note.startswith("method: symmetry")
     assert told["notes"] == [size_note]
     assert gap_note.startswith("gap at 16 electrons")
 

@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from typing import Any
 
 import numpy as np
 import scipy.linalg
@@ -14,7 +15,8 @@ from ribbon.analysis.exact import blocks_of, fits_dense, resolve_slopes, to_unif
 from ribbon.analysis.filling import Filled, Filling, fill
 from ribbon.analysis.joining import Follower, follow_bands
 from ribbon.analysis.levels import AnyArray, FloatArray, IntArray, Levels, finest, tolerance
-from ribbon.analysis.spectrum import all_levels, levels_between, levels_near, nearest_shells
+from ribbon.analysis.reduction import sweep_reduced
+from ribbon.analysis.spectrum import Method, all_levels, levels_between, levels_near, nearest_shells
 from ribbon.errors import BadInput
 from ribbon.hopping import Hamiltonian
 
@@ -25,12 +27,16 @@ Progress = Callable[[int, int], None]
 
 @dataclass(frozen=True, kw_only=True)
 class Window:
-    """Which levels are wanted: all, between two energies, or ``count`` nearest to ``near``."""
+    """Which levels are wanted: all, between two energies, or ``count`` nearest to ``near``.
+
+    ``method`` overrides the choice of how they are found.
+    """
 
     near: float = 0.0
     count: int = 40
     between: tuple[float, float] | None = None
     all: bool = False
+    method: Method = "auto"
 
     def choose(self, energies: FloatArray, same: float) -> tuple[int, int, tuple[float, float]]:
         """First and last position in a complete spectrum, and the edges of the window."""
@@ -45,12 +51,13 @@ class Window:
 
     def find(self, hamiltonian: Hamiltonian, *, flux: float, states: bool = False) -> Levels:
         """The levels of this window, certified."""
+        options: Any = {"flux": flux, "states": states, "method": self.method}
         if self.all:
-            return all_levels(hamiltonian, flux=flux, states=states)
+            return all_levels(hamiltonian, **options)
         if self.between is not None:
             lower, upper = self.between
-            return levels_between(hamiltonian, lower, upper, flux=flux, states=states)
-        return levels_near(hamiltonian, self.near, count=self.count, flux=flux, states=states)
+            return levels_between(hamiltonian, lower, upper, **options)
+        return levels_near(hamiltonian, self.near, count=self.count, **options)
 
 
 @dataclass(frozen=True, kw_only=True, eq=False)
@@ -80,7 +87,8 @@ class FluxResponse:
 
     ``level`` is the index in the complete spectrum, ``slope`` is dE/d(flux) of one electron,
     ``branch`` joins a level through crossings. ``totals`` is None where the complete spectrum
-    was out of reach; ``method`` says how the levels were found.
+    was out of reach; ``method`` says how the levels were found: "symmetry", "dense", "sparse"
+    (certified flux by flux) or "reduced" (one small certified problem for all fluxes).
     """
 
     flux: FloatArray
@@ -143,7 +151,7 @@ def sweep_flux(
     elif fits_dense(hamiltonian, 0.25, states=True):
         method, found = "dense", _sweep_dense(hamiltonian, points, wanted, used, progress)
     else:
-        method, found = "sparse", _sweep_sparse(hamiltonian, points, wanted, progress)
+        method, found = _sweep_window(hamiltonian, points, wanted, progress)
     return _collect(hamiltonian, points, found, method)
 
 
@@ -227,6 +235,17 @@ def _dense_point(
     states, slopes = resolve_slopes(hamiltonian, flux, energies, states)
     first, last, _ = window.choose(energies, tolerance(hamiltonian))
     return energies, slopes, states[:, first:last].copy(), first, last
+
+
+def _sweep_window(
+    hamiltonian: Hamiltonian, fluxes: FloatArray, window: Window, progress: Progress | None
+) -> tuple[str, list[_Point]]:
+    """Windows of large spectra: from one reduced problem where that pays, else flux by flux."""
+    if not window.all and window.method == "auto":
+        rows = sweep_reduced(hamiltonian, fluxes, window, progress)
+        if rows is not None:
+            return "reduced", [_Point(*row, None) for row in rows]
+    return "sparse", _sweep_sparse(hamiltonian, fluxes, window, progress)
 
 
 def _sweep_sparse(

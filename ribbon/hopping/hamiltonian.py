@@ -200,7 +200,7 @@ class Hamiltonian:
     def _from_template(self, flux: float, gauge: str, *, slope: bool) -> AnyArray:
         template, seam = self._template, gauge == "seam"
         assert template is not None
-        real = not slope and (flux == 0 or (seam and float(2 * flux).is_integer()))
+        real = not slope and template.is_real(flux, seam=seam)
         out = np.empty(template.nnz, dtype=np.float64 if real else np.complex128)
         return template.fill(out, flux, self.site_energies, seam=seam, slope=slope)
 

@@ -17,6 +17,7 @@ from numpy.typing import NDArray
 
 from ribbon.hopping.cores import share_out
 from ribbon.lattice import Ring
+from ribbon.lattice.definition import TOLERANCE
 from ribbon.lattice.ring import cell_bonds
 from ribbon.lattice.seam import fold
 
@@ -108,7 +109,7 @@ class Template:
     ) -> AnyArray:
         """Write the entries at a flux into ``out``, or their derivative by the flux."""
         block = out[self._middle].reshape(self.periods, -1)
-        period = entries(self.body, flux, seam=seam, slope=slope)
+        period = self.entries(self.body, flux, seam=seam, slope=slope)
         self._by_parts(lambda part: np.copyto(block[part], period))
         self.fill_ends(out, flux, seam=seam, slope=slope)
         if self.body.diagonal.size:
@@ -118,13 +119,28 @@ class Template:
             self._ends_diagonal(out, np.zeros_like(energies) if slope else energies)
         return out
 
+    def entries(self, rows: Rows, flux: float, *, seam: bool, slope: bool) -> AnyArray:
+        """Entries of some rows at a flux, or their derivative by it."""
+        turns = rows.winding.astype(np.float64) if seam else rows.uniform
+        return _Phases(self.turns[seam], flux, slope).values(rows, turns)
+
+    def is_real(self, flux: float, *, seam: bool) -> bool:
+        """True where every phase of a flux is real."""
+        return _Phases(self.turns[seam], flux, slope=False).real
+
+    @cached_property
+    def turns(self) -> tuple[FloatArray, FloatArray]:
+        """Sizes of turns per flux quantum that occur: in the uniform gauge, and on the seam."""
+        wound = np.concatenate([[0], np.abs(self.head.winding), np.abs(self.tail.winding)])
+        return np.unique(np.abs(self.body.uniform)), np.unique(wound).astype(np.float64)
+
     def fill_ends(self, out: AnyArray, flux: float, *, seam: bool, slope: bool = False) -> None:
         """Rewrite the rows next to the seam alone: in the seam gauge no other entry changes."""
         for rows, place in (
             (self.head, slice(0, self._middle.start)),
             (self.tail, slice(self._middle.stop, None)),
         ):
-            values = entries(rows, flux, seam=seam, slope=slope)
+            values = self.entries(rows, flux, seam=seam, slope=slope)
             if rows.diagonal.size and not slope:
                 values[rows.diagonal] = out[place][rows.diagonal].real
             out[place] = values
@@ -149,14 +165,32 @@ class Template:
         return np.concatenate([*parts, _row_sums(self.tail)])
 
 
-def entries(rows: Rows, flux: float, *, seam: bool, slope: bool) -> AnyArray:
-    """Entries of some rows at a flux, diagonal left at zero; real where every phase is."""
-    turns = rows.winding.astype(np.float64) if seam else rows.uniform
-    half = np.rint(2 * flux * turns)
-    if np.array_equal(half, 2 * flux * turns) and not slope:
-        return np.asarray(rows.amplitude * (1.0 - 2.0 * (half % 2)))
-    values = rows.amplitude * np.exp(2j * np.pi * flux * turns)
-    return np.asarray(2j * np.pi * turns * values if slope else values)
+@dataclass(frozen=True, eq=False)
+class _Phases:
+    """Phases of a flux: one table for all rows, so that both entries of a bond agree to the bit.
+
+    ``turns`` are the sizes that occur, in turns per flux quantum.
+    """
+
+    turns: FloatArray
+    flux: float
+    slope: bool
+
+    @property
+    def real(self) -> bool:
+        """True where every phase is 1 or -1."""
+        twice = 2 * self.flux * self.turns
+        return bool(np.array_equal(np.rint(twice), twice))
+
+    def values(self, rows: Rows, turns: FloatArray) -> AnyArray:
+        """Entries of some rows, diagonal left at zero; real where every phase is."""
+        place = np.searchsorted(self.turns, np.abs(turns))
+        if self.real and not self.slope:
+            half = np.rint(2 * self.flux * self.turns)
+            return np.asarray(rows.amplitude * (1.0 - 2.0 * (half % 2))[place])
+        phase = np.exp(2j * np.pi * self.flux * self.turns)[place]
+        values = rows.amplitude * np.where(turns < 0, phase.conj(), phase)
+        return np.asarray(2j * np.pi * turns * values if self.slope else values)
 
 
 def _row_sums(rows: Rows) -> FloatArray:
@@ -205,7 +239,7 @@ def _whole_period(
     size = strip.cell.n
     bonds = cell_bonds(strip, ring.shells)
     value = -np.array(shells)[bonds.shell - 1]
-    turns = bonds.displacement[:, 0] * strip.spacing / ring.circumference
+    turns = _merged(bonds.displacement[:, 0]) * strip.spacing / ring.circumference
     period, place = np.divmod(bonds.head, size)
     own = np.arange(size if diagonal else 0)
     row = np.concatenate([bonds.tail, place, own])
@@ -214,6 +248,20 @@ def _whole_period(
     uniform = np.concatenate([turns, -turns, np.zeros(own.size)])
     order = np.lexsort((column, row))
     return row[order], column[order], amplitude[order], uniform[order]
+
+
+def _merged(step: FloatArray) -> FloatArray:
+    """Steps that differ by rounding alone made equal in size.
+
+    A bond across a flipped seam is met from its other end as the image of another bond of the
+    period; both must give the same phase to the bit.
+    """
+    size = np.abs(step)
+    order = np.argsort(size)
+    first = np.concatenate([[True], np.diff(size[order]) > TOLERANCE])
+    merged = np.empty_like(size)
+    merged[order] = size[order][first][np.cumsum(first) - 1] if size.size else size
+    return np.asarray(np.copysign(merged, step))
 
 
 def _folded(

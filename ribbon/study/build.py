@@ -227,7 +227,9 @@ def _electrons(file: RibbonFile) -> float | Literal["neutral"] | None:
 def _window(file: RibbonFile) -> Window:
     keys = file.levels
     between = None if keys.between is None else (keys.between[0], keys.between[1])
-    return Window(near=keys.near, count=keys.count or 40, between=between, all=keys.all)
+    return Window(
+        near=keys.near, count=keys.count or 40, between=between, all=keys.all, method=keys.method
+    )
 
 
 def _check_pieces(ring: Ring) -> None:

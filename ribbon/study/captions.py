@@ -15,7 +15,7 @@ from ribbon.study.findings import (
     strongest_edge_state,
 )
 from ribbon.study.numbers import quantity
-from ribbon.study.wording import conventions, gap_text, peak_current, subtitle
+from ribbon.study.wording import conventions, energy_text, gap_text, peak_current, subtitle
 
 if TYPE_CHECKING:
     from ribbon.study.result import Case, StudyResult
@@ -146,8 +146,8 @@ def _space(result: StudyResult) -> Caption:
 def _edge_state(result: StudyResult) -> Caption:
     case = result.ribbon
     assert case.edges is not None
-    best = strongest_edge_state(case.edges)
-    energy = quantity(float(case.edges.energy[best]), case.levels.unit)
+    best = strongest_edge_state(case)
+    energy = energy_text(float(case.edges.energy[best]), case)
     weight = percent(float(case.edges.edge_weight[best]))
     loops = [loop for loop in case.edges.loops if loop.is_edge]
     long = f", {loops[0].length:.4g} nm" if loops else ""
@@ -174,7 +174,8 @@ def _edges(result: StudyResult) -> Caption:
         "Edge states against momentum",
         "Energy against the strongest wave number along the unrolled edge; the area of a mark is "
         "the weight at the edge. A one-sided ribbon has one edge of length 2L and wave numbers "
-        f"spaced by π/L, a plain one 2π/L. Levels with more than half at the edge: {beside}.",
+        "spaced by π/L, a plain one 2π/L; at whole and half quanta, where k and −k are equal, its "
+        f"size is shown. Levels with more than half at the edge: {beside}.",
         f"Energy against edge momentum. Levels at the edge: {beside}.",
     )
 
@@ -188,7 +189,8 @@ def _density(result: StudyResult) -> Caption:
         "Density of states",
         f"Levels per energy and site from {whole}, each a Gaussian of standard deviation "
         f"{quantity(found.broadening, found.unit)} (levels.broadening), spin not counted; below, "
-        "the part of all levels that lies under an energy.",
+        "the part of all levels that lies under an energy. Where the broadening is fine for the "
+        "whole spectrum, the part around the levels found is shown.",
         f"Density of states of the ribbon beside its controls, from {whole}.",
     )
 

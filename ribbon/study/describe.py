@@ -50,7 +50,9 @@ def describe(file: RibbonFile) -> dict[str, Any]:
         "sizes_that_close": [f"rows = {rows}, length = {length:g}" for rows, length in near],
         "forecast": {
             "levels_method": levels.method,
-            "levels_method_because": choice(hamiltonian, whole=plan.window.all)[1],
+            "levels_method_because": choice(
+                hamiltonian, whole=plan.window.all, method=plan.window.method
+            )[1],
             "levels_seconds": levels.seconds,
             "levels_bytes": levels.bytes,
             "sweep_method": sweep.method,

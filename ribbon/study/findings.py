@@ -42,9 +42,12 @@ def at_the_edge(found: EdgeStates) -> int:
     return int(np.count_nonzero(found.edge_weight > HALF))
 
 
-def strongest_edge_state(found: EdgeStates) -> int:
-    """Position of the level with the largest edge weight, of equals the first."""
-    return int(np.argmax(np.round(found.edge_weight, 9)))
+def strongest_edge_state(case: Case) -> int:
+    """Position of the level with the largest edge weight, of equals the nearest to the gap."""
+    found = case.edges
+    assert found is not None
+    place = np.abs(found.level - (case.electrons / case.spin - 0.5))
+    return int(np.lexsort((place, -np.round(found.edge_weight, 9)))[0])
 
 
 def percent(value: float) -> str:
@@ -90,20 +93,20 @@ def state_sentences(result: StudyResult) -> list[str]:
     case = result.ribbon
     found = []
     if case.edges is not None and case.edges.level.size:
-        found.append(_edge_sentence(case.edges))
+        found.append(_edge_sentence(case, case.edges))
     if case.continuum is not None and case.continuum.holds.any():
         found.append(_continuum_sentence(case.continuum))
         found += [_shift_sentence(case, c) for c in result.controls if _shifted(c)]
     return found
 
 
-def _edge_sentence(found: EdgeStates) -> str:
+def _edge_sentence(case: Case, found: EdgeStates) -> str:
     count, total = at_the_edge(found), found.level.size
     start = (
         f"{count} of the {total} levels found live at the edge (more than half of the probability "
         f"within {found.within:.3g} nm of it)"
     )
-    best = strongest_edge_state(found)
+    best = strongest_edge_state(case)
     decay = found.decay_length[best]
     if not count:
         return f"None of the {total} levels found lives at the edge."

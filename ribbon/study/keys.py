@@ -177,6 +177,8 @@ class Levels(KeyTable):
     """true: the whole spectrum"""
     between: Annotated[tuple[Energy, ...], Field(strict=False)] | None = None
     """[lower, upper]: every level between two energies"""
+    method: Literal["auto", "symmetry", "dense", "sparse"] = "auto"
+    """how they are found; "auto" chooses from the size and symmetry"""
     broadening: Positive = 0.02
     """width given to each level in the density of states, in the unit"""
 

@@ -14,6 +14,7 @@ from typing import TYPE_CHECKING, Any, Literal
 
 from ribbon.analysis import Gap, Levels
 from ribbon.analysis.continuum import MEANT_FOR
+from ribbon.analysis.spectrum import choice
 from ribbon.errors import BadInput, NotCertified
 from ribbon.study.build import Model, Plan, build
 from ribbon.study.cases import Progress, levels_case, levels_with_states, threads_for, with_sweep
@@ -111,7 +112,7 @@ def _run(file: RibbonFile, progress: Progress, scope: Scope) -> StudyResult:
         checks = (*_checks(plan, cases[0], scope), *told.failed)
     notes = [*told.notes, *_remarks(plan, cases[0])]
     if scope == "levels":
-        notes.append(_gaps(cases[0]))
+        notes += [_method(plan, cases[0]), _gaps(cases[0])]
     return StudyResult(
         title=file.heading,
         file=file,
@@ -215,6 +216,13 @@ def _remarks(plan: Plan, case: Case) -> list[str]:
             "electrons at every flux; this is not the canonical ensemble"
         )
     return notes
+
+
+def _method(plan: Plan, case: Case) -> str:
+    """Which way the levels were found, and why, in a line."""
+    window = plan.window
+    _, why = choice(case.hamiltonian, whole=window.all, method=window.method)
+    return f"method: {case.levels.certificate.method} ({why})"
 
 
 def _gaps(case: Case) -> str:

@@ -54,6 +54,7 @@ count = 40  # that many levels, nearest to `near`
 near = {near}
 # all = true  # instead of count: the whole spectrum
 # between = [-0.5, 0.5]  # instead of count: every level between two energies
+# method = "auto"  # or "symmetry", "dense", "sparse": how they are found
 broadening = 0.02  # width of each level in the density of states, in the unit
 
 [sweep]

@@ -107,7 +107,7 @@ def test_a_large_matrix_needs_no_bonds() -> None:
     assert "amplitudes" not in vars(hamiltonian)
     assert hamiltonian.site_energies.strides == (0,)
     assert ring.bonds.m == 147_500
-    assert abs(matrix - matrix.conj().T).max() == 0
+    assert abs(matrix - matrix.conj().T).max() == 0  # to the bit
 
 
 @pytest.mark.parametrize("gauge", ["seam", "uniform"])

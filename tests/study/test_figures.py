@@ -158,7 +158,7 @@ def test_svg_is_the_same_every_time(annulene: StudyResult):
     first = {name: to_svg(figure) for name, figure in draw_all(annulene).items()}
     again = {name: to_svg(figure) for name, figure in draw_all(annulene).items()}
     assert first == again
-    assert set(first) == {"ribbon", "levels", "flux", "currents", "shift"}
+    assert set(first) == {"ribbon", "space", "levels", "flux", "currents", "shift"}
     for svg in first.values():
         assert "dc:date" not in svg
         assert "<text" in svg
@@ -461,11 +461,11 @@ def test_every_figure_has_its_numbers(annulene: StudyResult):
     assert half.max() == 1.0
 
 
-def test_a_study_without_sweep_or_controls_has_two_figures():
-    """The ribbon and its levels; nothing is drawn that was not computed."""
+def test_a_study_without_sweep_or_controls_has_three_figures():
+    """The ribbon, flat and in space, and its levels; nothing is drawn that was not computed."""
     study = make_study(points=0, controls=())
-    assert set(draw_all(study)) == {"ribbon", "levels"}
-    assert set(figure_data(study)) == {"ribbon", "levels"}
+    assert set(draw_all(study)) == {"ribbon", "space", "levels"}
+    assert set(figure_data(study)) == {"ribbon", "space", "levels"}
 
 
 def test_a_sweep_of_many_levels_becomes_a_picture():

@@ -363,7 +363,7 @@ def test_levels_without_totals_make_a_page_too(annulene: StudyResult):
         case, response=replace(case.response, totals=None), harmonics=None, half=None, gap=case.gap
     )
     study = replace(annulene, cases=(bare,))
-    assert set(draw_all(study)) == {"ribbon", "levels", "flux"}
+    assert set(draw_all(study)) == {"ribbon", "space", "levels", "flux"}
     assert "Largest current" not in {fact.label for fact in facts(study)}
     text = render_report(study, {name: to_svg(f) for name, f in draw_all(study).items()})
     assert "totals-ribbon" not in text

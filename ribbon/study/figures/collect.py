@@ -8,11 +8,18 @@ from typing import TYPE_CHECKING, Any
 import numpy as np
 from matplotlib.figure import Figure
 
+from ribbon.study.figures.continuum import draw_continuum, errors_table
 from ribbon.study.figures.currents import draw_currents
+from ribbon.study.figures.density import draw_density, per_site_table
+from ribbon.study.figures.edge_state import draw_edge_state
+from ribbon.study.figures.edges import draw_edges, ribbon_momentum
 from ribbon.study.figures.flux import branch_lines, draw_flux
 from ribbon.study.figures.levels import draw_levels, level_window
 from ribbon.study.figures.ribbon import draw_ribbon
 from ribbon.study.figures.shift import draw_shift
+from ribbon.study.figures.space import draw_space, space_table
+from ribbon.study.figures.unrolled import content_table, edge_state_table
+from ribbon.study.state_tables import edges_table, histogram_table
 from ribbon.study.tables import (
     Table,
     harmonics_table,
@@ -29,20 +36,39 @@ __all__ = ["draw_all", "figure_data"]
 
 
 def draw_all(result: StudyResult) -> dict[str, Figure]:
-    """Every figure the study has numbers for, under the name of its file."""
-    figures = {"ribbon": draw_ribbon(result.ribbon), "levels": draw_levels(result.cases)}
-    if result.ribbon.response is not None:
+    """Every figure the study has numbers for, under the name of its file, in order."""
+    ribbon = result.ribbon
+    figures = {"ribbon": draw_ribbon(ribbon)}
+    if ribbon.hamiltonian.ring is not None:
+        figures["space"] = draw_space(ribbon)
+    figures["levels"] = draw_levels(result.cases)
+    if ribbon.response is not None:
         figures["flux"] = draw_flux(result.cases)
-        if result.ribbon.response.totals is not None:
+        if ribbon.response.totals is not None:
             figures["currents"] = draw_currents(result.cases)
     control = result.nearest_control
     if control is not None:
-        figures["shift"] = draw_shift(result.ribbon, control)
+        figures["shift"] = draw_shift(ribbon, control)
+    if _has_edge_states(ribbon):
+        figures["edge-state"] = draw_edge_state(ribbon)
+        figures["edges"] = draw_edges(result.cases)
+    if ribbon.density is not None:
+        figures["density"] = draw_density(result.cases)
+    if ribbon.continuum is not None and ribbon.continuum.level.size:
+        figures["continuum"] = draw_continuum(ribbon)
     return figures
 
 
+def _has_edge_states(case: Case) -> bool:
+    """True where there is a state to show at the edge (a window may hold no level)."""
+    return case.edges is not None and case.edges.level.size > 0 and case.levels.states is not None
+
+
 def figure_data(result: StudyResult) -> dict[str, Table]:
-    """The numbers behind the figures, under the same names (the harmonics under their own)."""
+    """The numbers behind the figures, under the same names.
+
+    Harmonics, the momentum content along the edge and the histogram have names of their own.
+    """
     unit = result.ribbon.levels.unit
     control = result.nearest_control
     data = {
@@ -62,6 +88,25 @@ def figure_data(result: StudyResult) -> dict[str, Table]:
         )
     if control is not None:
         data["shift"] = shift_table(result.ribbon, control)
+    return data | _state_data(result)
+
+
+def _state_data(result: StudyResult) -> dict[str, Table]:
+    """The numbers behind the figures of states, of the density and of the continuum."""
+    ribbon, data = result.ribbon, {}
+    if ribbon.hamiltonian.ring is not None:
+        data["space"] = space_table(ribbon)
+    if _has_edge_states(ribbon):
+        data["edge-state"] = edge_state_table(ribbon)
+        data["edge-content"] = content_table(ribbon)
+        edged = [case for case in result.cases if case.edges is not None and case.edges.level.size]
+        data["edges"] = _stacked("edges", edged, (_edges(case, ribbon) for case in edged))
+    if ribbon.density is not None:
+        dense = [case for case in result.cases if case.density is not None]
+        data["density"] = _stacked("density", dense, map(per_site_table, dense))
+        data["histogram"] = histogram_table(ribbon)
+    if ribbon.continuum is not None and ribbon.continuum.level.size:
+        data["continuum"] = errors_table(ribbon)
     return data
 
 
@@ -100,4 +145,15 @@ def _lines(case: Case, first: Case) -> Table:
         },
         {"flux": "h/e", "ribbon_flux": "h/e", "energy": case.levels.unit},
         "Levels against flux, as drawn",
+    )
+
+
+def _edges(case: Case, ribbon: Case) -> Table:
+    """Edge states of a case, with the wave number as the figure shows it."""
+    table = edges_table(case)
+    return Table(
+        table.name,
+        {**table.columns, "ribbon_momentum": ribbon_momentum(case, ribbon)},
+        {**table.units, "ribbon_momentum": "2π/L of the ribbon"},
+        table.about,
     )

@@ -25,6 +25,7 @@ from ribbon.study.numbers import axis_unit
 __all__ = [
     "BAND",
     "DARK",
+    "FACES",
     "FULL",
     "HALF",
     "INK",
@@ -97,6 +98,13 @@ def mixed(colour: str, paper: str, share: float) -> str:
     return to_hex((red, green, blue))
 
 
+SHADES = (0.46, 0.51, 0.56, 0.61, 0.66, 0.71, 0.76, 0.81)
+"""How far the faces of a band are mixed with the paper, from seen aslant to seen square on."""
+
+SIDES = (LOOKS["ribbon"], LOOKS["plain"])
+FACES = tuple(tuple(mixed(look.colour, PAPER, share) for share in SHADES) for look in SIDES)
+"""Tints of the two faces of a band in space."""
+
 DARK = {
     INK: "#e8ecf2",
     QUIET: "#a3adba",
@@ -107,6 +115,11 @@ DARK = {
         mixed(look.colour, PAPER, tint): mixed(look.dark, NIGHT, tint)
         for look in LOOKS.values()
         for tint in (*TINTS, PALE)
+    },
+    **{
+        mixed(look.colour, PAPER, share): mixed(look.dark, NIGHT, share)
+        for look in SIDES
+        for share in SHADES
     },
 }
 """The colour that takes the place of each colour on a dark page."""
