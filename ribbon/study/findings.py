@@ -74,11 +74,11 @@ def state_facts(case: Case) -> list[Fact]:
         detail = f"more than half within {case.edges.within:.3g} nm of an edge"
         facts.append(Fact("Levels at the edge", f"{count} of {case.edges.level.size}", detail))
     if case.continuum is not None and case.continuum.holds.any():
-        worst = _worst(case.continuum)
-        count = int(np.count_nonzero(case.continuum.holds))
-        plural = "s" * (count != 1)
-        detail = f"largest of {count} level{plural} with |k|a up to 0.5"
-        facts.append(Fact("Off the continuum", percent(worst), detail))
+        found = case.continuum
+        count = int(np.count_nonzero(found.holds))
+        near = int(np.count_nonzero(np.abs(found.relative_error[found.holds]) <= 0.01))
+        detail = f"of {count} with |k|a up to 0.5; largest error {percent(_worst(found))}"
+        facts.append(Fact("Within 1 % of the continuum", f"{near} of {count}", detail))
     return facts
 
 
@@ -138,7 +138,7 @@ def spread(found: ContinuumComparison) -> str:
     errors = np.abs(found.relative_error[found.holds])
     near, rough = (int(np.count_nonzero(errors <= limit)) for limit in (0.01, 0.1))
     worst = percent(_worst(found))
-    return f"the lattice is within 1 % of it for {near}, within 10 % for {rough}, at most {worst}"
+    return f"the lattice is within 1 % of it for {near}, within 10 % for {rough}; the farthest is off by {worst}"
 
 
 def _shifted(control: Case) -> bool:

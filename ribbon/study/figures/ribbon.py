@@ -76,7 +76,7 @@ def draw_ribbon(case: Case) -> Figure:
     scale = _scale(sheet)
     with styled():
         if scale * sheet.bond >= READABLE or sheet.length < STOUT * sheet.height:
-            figure = new_figure(FULL, scale * (sheet.height + 2 * _margin(sheet, scale)) + 24)
+            figure = new_figure(FULL, scale * (sheet.height + 2 * _margin(sheet, scale)) + 34)
             _draw_part(figure.subplots(), sheet, scale, (sheet.left, sheet.right))
         else:
             figure = _draw_in_parts(sheet)
