@@ -138,7 +138,8 @@ def spread(found: ContinuumComparison) -> str:
     errors = np.abs(found.relative_error[found.holds])
     near, rough = (int(np.count_nonzero(errors <= limit)) for limit in (0.01, 0.1))
     worst = percent(_worst(found))
-    return f"the lattice is within 1 % of it for {near}, within 10 % for {rough}; the farthest is off by {worst}"
+    start = f"the lattice is within 1 % of it for {near}, within 10 % for {rough}"
+    return f"{start}; the farthest is off by {worst}"
 
 
 def _shifted(control: Case) -> bool:
