@@ -160,7 +160,9 @@ def _decay(profile: RowProfile) -> FloatArray:
         rough = np.sqrt((weight * (y - slope * x) ** 2).sum(axis=0) / total)
         length = np.where(slope < 0, -2.0 / slope, np.nan)
     falls = weight[-1] <= np.exp(-2.0) * weight[0]
-    decays = falls & (weight[0] == 1.0) & (rough < ROUGH) & (depth.shape[0] > 1)
+    # a node in the last row is no decay: the line itself must fall as far
+    falls_along = slope * (depth[-1] - depth[0]) <= -2.0
+    decays = falls & falls_along & (weight[0] == 1.0) & (rough < ROUGH) & (depth.shape[0] > 1)
     single = falls & (weight[0] == 1.0) & (np.count_nonzero(weight, axis=0) == 1)
     return np.where(single, 0.0, np.where(decays, length, np.nan))
 
@@ -185,6 +187,18 @@ def edge_content(
     Weights of a level sum to 1. Wave numbers are spaced by 1 / winding. Raises `BadInput` for
     a loop that does not run round the ring, or whose length is no whole number of periods.
     """
+    numbers, power = _edge_power(hamiltonian, levels, loop)
+    return numbers, _normed(power)
+
+
+def _edge_power(
+    hamiltonian: Hamiltonian, levels: Levels, loop: EdgeLoop
+) -> tuple[FloatArray, FloatArray]:
+    """Wave numbers along an edge, and the probability that stands in each.
+
+    Summed over the kinds of site that a period of the edge has: kinds that cancel each other
+    do not make a state vanish. The sum over all wave numbers is the probability on the edge.
+    """
     ring = hamiltonian.ring
     if ring is None or not loop.is_edge or levels.states is None:
         raise BadInput("momentum content needs an edge that runs round the ring, and states")
@@ -195,17 +209,20 @@ def edge_content(
     amplitude = unroll(ring, loop, levels.states)
     place = (loop.along - loop.along[0]) / ring.strip.period
     period = np.floor(place + 1e-6)
-    _, kind, class_of = np.unique(
-        np.rint((place - period) * 1e6), return_index=True, return_inverse=True
-    )
-    grid = np.zeros((kind.size, count, levels.m), dtype=np.complex128)
-    np.add.at(grid, (class_of, period.astype(np.int64) % count), amplitude)
+    height = np.abs(ring.positions[loop.sites, 1]) / ring.strip.spacing
+    kinds = np.rint(np.stack([place - period, height]) * 1e6)
+    _, kind = np.unique(kinds, axis=1, return_inverse=True)
+    kind = kind.ravel()
+    grid = np.zeros((int(kind.max()) + 1, count, levels.m), dtype=np.complex128)
+    np.add.at(grid, (kind, period.astype(np.int64) % count), amplitude)
+    power = (np.abs(np.fft.fft(grid, axis=1)) ** 2).sum(axis=0) / count
     number = np.fft.fftfreq(count, 1 / count)
-    shift = np.exp(-2j * np.pi * np.outer((place - period)[kind], number) / count)
-    power = np.abs((np.fft.fft(grid, axis=1) * shift[:, :, None]).sum(axis=0)) ** 2
-    power /= np.maximum(power.sum(axis=0), np.finfo(np.float64).tiny)
     order = np.argsort(number)
     return number[order] / loop.winding + levels.flux, power[order]
+
+
+def _normed(power: FloatArray) -> FloatArray:
+    return np.asarray(power / np.maximum(power.sum(axis=0), np.finfo(np.float64).tiny))
 
 
 def _strongest(
@@ -220,9 +237,11 @@ def _strongest(
     whole = abs(sum(windings) * ring.strip.length - round(sum(windings) * ring.strip.length))
     if len(windings) != 1 or 0 in windings or whole > 1e-6:
         return nothing, nothing.copy()
-    found = [edge_content(hamiltonian, levels, loop) for loop in edges]
+    # probabilities of all edges are added and averaged over the shell before they are normed: an
+    # edge or a partner without the state has no say
+    found = [_edge_power(hamiltonian, levels, loop) for loop in edges]
     number = found[0][0]
-    content = shell_means(np.sum([power for _, power in found], axis=0) / len(found), groups)
+    content = _normed(shell_means(np.sum([power for _, power in found], axis=0), groups))
     # of two equal ones, as time reversal makes them, the forward one
     ahead = content * (1 + 1e-9 * (number > 0))[:, None]
     best = np.argmax(ahead, axis=0)

@@ -1,6 +1,6 @@
 """Time and memory of the main jobs, and ratios against the plain way, measured in one run.
 
-    python -m tests.benchmarks [--quick] [--json FILE]
+    python -m tests.benchmarks [--quick] [--json FILE] [--figure FILE]
 
 Nothing here asserts a time: machines differ. Medians of the runs are printed.
 """
@@ -10,60 +10,28 @@ from __future__ import annotations
 import argparse
 import json
 import resource
-import statistics
 import subprocess
 import sys
 import tempfile
 import time
-from collections.abc import Callable, Iterator
+from collections.abc import Iterator
 from pathlib import Path
 
 import numpy as np
-import scipy.linalg
-from scipy.sparse import coo_array
-from scipy.sparse.linalg import eigsh
-from threadpoolctl import threadpool_limits
 
-import ribbon
-from ribbon.analysis.counting import count_negative, find_order
+from tests.benchmarks.densities import densities
+from tests.benchmarks.matrices import matrices
+from tests.benchmarks.measure import Row, median_seconds
+from tests.benchmarks.scaling import draw_scaling, scaling
+from tests.benchmarks.spectra import spectra
+from tests.benchmarks.sweeps import sweeps
+from tests.benchmarks.windows import windows
 
 ROOT = Path(__file__).resolve().parents[2]
 EXAMPLE = ROOT / "examples" / "zigzag-graphene.toml"
 
 
-def median_seconds(job: Callable[[], object], runs: int) -> float:
-    """Median wall time of several runs."""
-    times = []
-    for _ in range(runs):
-        start = time.perf_counter()
-        job()
-        times.append(time.perf_counter() - start)
-    return statistics.median(times)
-
-
-def hamiltonian(length: float, *, rows: int = 8, disorder: float = 0.0) -> ribbon.Hamiltonian:
-    """A one-sided zigzag ring."""
-    strip = ribbon.lay_strip("honeycomb-zigzag", rows=rows, length=length)
-    ring = ribbon.close_strip(strip, half_twists=1, orbital="pz")
-    return ribbon.assemble(ring, ribbon.Hopping(shells=(1.0,), disorder=disorder))
-
-
-def plain_matrix(pairs: list[tuple[int, int]], n: int) -> coo_array:
-    """The plain way: Python lists, one bond at a time."""
-    rows, columns, values = [], [], []
-    for tail, head in pairs:
-        rows += [tail, head]
-        columns += [head, tail]
-        values += [-1.0, -1.0]
-    return coo_array((values, (rows, columns)), shape=(n, n)).tocsr()
-
-
-def compare(name: str, ours: float, plain: float, what: str) -> dict[str, object]:
-    """One line of the table."""
-    return {"job": name, "seconds": ours, "plain": plain, "ratio": plain / ours, "against": what}
-
-
-def studies(quick: bool) -> Iterator[dict[str, object]]:
+def studies(quick: bool) -> Iterator[Row]:
     """Whole runs of the command, in processes of their own."""
     command = [sys.executable, "-m", "ribbon.cli"]
     seconds = median_seconds(
@@ -93,47 +61,18 @@ def studies(quick: bool) -> Iterator[dict[str, object]]:
         yield {"job": name, "seconds": taken, "peak_MB": peak}
 
 
-def kernels(quick: bool) -> Iterator[dict[str, object]]:
-    """Assembly, complete spectra, counts and windows against the plain way."""
-    runs = 3 if quick else 5
-    long = hamiltonian(1000.0 if quick else 5000.0, rows=10, disorder=0.3)
-    bonds = long.network.bonds
-    pairs = list(zip(bonds.tail.tolist(), bonds.head.tolist(), strict=True))
-    fresh = median_seconds(
-        lambda: ribbon.assemble(long.network, ribbon.Hopping()).matrix(0.3), runs
-    )
-    lists = median_seconds(lambda: plain_matrix(pairs, long.n), runs)
-    yield compare(f"assemble {long.n:,} sites", fresh, lists, "python lists")
-    flux = median_seconds(lambda: long.data(0.3), runs)
-    yield compare(f"new flux, {long.n:,} sites", flux, lists, "python lists")
-
-    clean = hamiltonian(62.0 if quick else 125.0)
-    blocks = median_seconds(lambda: ribbon.all_levels(clean, flux=0.3), runs)
-    dense_matrix = clean.matrix(0.3).toarray()
-    dense = median_seconds(lambda: scipy.linalg.eigvalsh(dense_matrix), 1 if quick else 3)
-    yield compare(f"complete clean spectrum, {clean.n:,} sites", blocks, dense, "dense")
-
-    matrix = long.matrix(0.0, gauge="seam")
-    order = find_order(matrix)
-    with threadpool_limits(limits=1, user_api="blas"):
-        count = median_seconds(lambda: count_negative(matrix, 0.1, order), runs)
-        yield {"job": f"certified count, {long.n:,} sites", "seconds": count}
-        size = 20
-        ours = median_seconds(lambda: ribbon.levels_near(long, 0.1, count=size), 1)
-        plain = median_seconds(lambda: eigsh(matrix, k=size, sigma=0.1), 1)
-        yield compare(
-            f"{size} certified levels, {long.n:,} sites", ours, plain, "eigsh, no certificate"
-        )
-
-
 def main() -> None:
     """Run everything and print the table."""
     parser = argparse.ArgumentParser(description=__doc__)
     parser.add_argument("--quick", action="store_true", help="small sizes, under two minutes")
     parser.add_argument("--json", type=Path, help="write the table here too")
+    parser.add_argument("--figure", type=Path, help="draw cost against size here")
+    parser.add_argument("--only", help="one group of jobs, e.g. windows")
     options = parser.parse_args()
     rows = []
-    for group in (kernels, studies):
+    for group in (matrices, spectra, windows, densities, sweeps, scaling, studies):
+        if options.only not in {None, group.__name__}:
+            continue
         for row in group(options.quick):
             rows.append(row)
             numbers = "".join(
@@ -141,6 +80,8 @@ def main() -> None:
             )
             print(f"{row['job']}:{numbers}  {row.get('against', '')}".rstrip(), flush=True)
     print(f"numpy {np.__version__}, python {sys.version.split()[0]}")
+    if options.figure:
+        draw_scaling(rows, options.figure)
     if options.json:
         options.json.write_text(json.dumps(rows, indent=2) + "\n", encoding="utf-8")
 
