@@ -11,6 +11,7 @@ import itertools
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass
 from functools import cached_property
+from typing import TypeVar
 
 import numpy as np
 from numpy.typing import NDArray
@@ -24,6 +25,8 @@ from ribbon.lattice import Ring
 from ribbon.lattice.ring import CellBonds
 
 __all__ = ["Blocks", "Labelled", "Sector", "Solved", "Spectrum"]
+
+T = TypeVar("T")
 
 BATCH = 1 << 20
 """Matrix elements solved at a time."""
@@ -188,8 +191,8 @@ class Blocks:
                 yield which, slice(first, first + step)
 
     def _each(
-        self, work: Callable[[tuple[int, slice]], FloatArray], jobs: list[tuple[int, slice]]
-    ) -> list[FloatArray]:
+        self, work: Callable[[tuple[int, slice]], T], jobs: list[tuple[int, slice]]
+    ) -> list[T]:
         total = sum(sector.momenta.size * sector.size**2 for sector in self.sectors)
         _ = self._templates, self._diagonals, self._halves  # found once, not by every thread
         return share_out(work, jobs, worth=total >= WORTH_THREADS)
@@ -202,7 +205,7 @@ class Blocks:
 
     def spectrum(self, flux: float) -> Spectrum:
         """The complete spectrum at a flux with slopes, labels and all eigenvectors."""
-        parts = [self.solve(i, flux) for i in range(self.parts)]
+        parts = self._all_solved(flux)
         energies = np.concatenate([part.energies.ravel() for part in parts])
         columns, order = self._labels(energies, flux)
         return Spectrum(
@@ -211,6 +214,18 @@ class Blocks:
             vectors=tuple(part.vectors for part in parts),
             **columns,
         )
+
+    def _all_solved(self, flux: float) -> list[Solved]:
+        """Every block of every sector, solved in batches."""
+        jobs = list(self._jobs())
+        found = self._each(lambda job: self.solve(job[0], flux, job[1]), jobs)
+        out = []
+        for i in range(self.parts):
+            own = [part for part, job in zip(found, jobs, strict=True) if job[0] == i]
+            columns = ((p.energies, p.slopes, p.vectors) for p in own)
+            energies, slopes, vectors = (np.concatenate(c) for c in zip(*columns, strict=True))
+            out.append(Solved(energies=energies, slopes=slopes, vectors=vectors))
+        return out
 
     def _labels(self, energies: FloatArray, flux: float) -> tuple[dict[str, AnyArray], IntArray]:
         """Labels of all levels in ascending order of energy, and that order."""
@@ -235,7 +250,7 @@ class Blocks:
         columns |= {"block": block, "band": band}
         return {name: values[order] for name, values in columns.items()}, order
 
-    def solve(self, which: int, flux: float, chosen: IntArray | None = None) -> Solved:
+    def solve(self, which: int, flux: float, chosen: slice | IntArray | None = None) -> Solved:
         """Energies, slopes and vectors of the blocks of a sector, or of some of them.
 
         Degenerate vectors of a block are turned so that the slope is diagonal inside a shell.
