@@ -12,6 +12,7 @@ from ribbon.analysis.density import (
     density_of_states,
     levels_density,
     local_density,
+    moments_density,
     shell_density,
 )
 from ribbon.analysis.edges import EdgeStates, edge_content, edge_states, row_profile, unroll
@@ -19,6 +20,13 @@ from ribbon.analysis.filling import Filling, Gap, find_gap, occupations
 from ribbon.analysis.flux import FluxResponse, Totals, Window, sweep_flux
 from ribbon.analysis.harmonic import HalfQuantum, Harmonics, half_quantum, harmonics
 from ribbon.analysis.levels import Certificate, Levels
+from ribbon.analysis.moments import (
+    LocalDensity,
+    Moments,
+    local_density_moments,
+    moments_for,
+    spectral_moments,
+)
 from ribbon.analysis.spectrum import (
     all_levels,
     count_below,
@@ -39,6 +47,8 @@ __all__ = [
     "HalfQuantum",
     "Harmonics",
     "Levels",
+    "LocalDensity",
+    "Moments",
     "Totals",
     "Window",
     "all_levels",
@@ -57,9 +67,13 @@ __all__ = [
     "levels_density",
     "levels_near",
     "local_density",
+    "local_density_moments",
+    "moments_density",
+    "moments_for",
     "occupations",
     "row_profile",
     "shell_density",
+    "spectral_moments",
     "sweep_flux",
     "unroll",
 ]

@@ -6,14 +6,18 @@ A degenerate shell has no states of its own, only a space; its density is the me
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
+from typing import Literal
 
 import numpy as np
 from numpy.typing import ArrayLike
-from scipy.special import erf
 
-from ribbon.analysis.exact import blocks_of
+from ribbon.analysis.broadening import REACH, bins, broadened, check_broadening, grid
+from ribbon.analysis.exact import blocks_of, fits_dense
 from ribbon.analysis.levels import FloatArray, IntArray, Levels, shell_edges, tolerance
+from ribbon.analysis.moments import Moments, moments_for, spectral_moments, standard_error
+from ribbon.analysis.series import jackson_series, nodes, point_weights
 from ribbon.analysis.spectrum import all_levels
 from ribbon.errors import BadInput
 from ribbon.hopping import Hamiltonian
@@ -23,15 +27,17 @@ __all__ = [
     "density_of_states",
     "levels_density",
     "local_density",
+    "moments_density",
     "shell_density",
     "shell_groups",
     "shell_means",
 ]
 
-POINTS = 801
-REACH = 6.0
-"""A level broadened by a Gaussian is followed so many widths to either side."""
-MOST_POINTS = 20_001
+LARGEST_DENSE = 2500
+"""Sites up to which a complete dense spectrum is cheaper than moments."""
+
+Spread = Callable[[FloatArray], tuple[FloatArray, FloatArray]]
+"""Density and its integral on a grid, both of shape (r, p)."""
 
 
 @dataclass(frozen=True, kw_only=True, eq=False)
@@ -43,22 +49,30 @@ class Density:
     grid of 20,001 points cannot resolve the broadening, ``density`` is the mean over each step.
     ``counts`` (shape (b,)) are the levels between neighbouring ``edges`` (shape (b + 1,)).
     ``complete`` is False where only a window of levels was known: then both hold inside it only.
+
+    ``method`` is "levels", or "moments" where no level was computed: then ``error`` is the
+    standard error of ``density`` (None where the moments are exact), and ``counts`` are expected
+    numbers of broadened levels, not whole.
     """
 
     energies: FloatArray
     density: FloatArray
     integrated: FloatArray
     edges: FloatArray
-    counts: IntArray
+    counts: IntArray | FloatArray
     broadening: float
     levels: int
     complete: bool
     unit: str
+    error: FloatArray | None = None
+    method: Literal["levels", "moments"] = "levels"
 
     def __post_init__(self) -> None:
         """Make every array read-only."""
         for array in (self.energies, self.density, self.integrated, self.edges, self.counts):
             array.setflags(write=False)
+        if self.error is not None:
+            self.error.setflags(write=False)
 
 
 def density_of_states(
@@ -67,12 +81,18 @@ def density_of_states(
     broadening: float,
     flux: float = 0.0,
     energies: ArrayLike | None = None,
+    method: Literal["auto", "exact", "moments"] = "auto",
+    seed: int = 1,
 ) -> Density:
-    """Density of states from the complete spectrum at a flux, broadened and as a histogram.
+    """Density of states of all levels at a flux, broadened and as a histogram.
 
     ``energies`` is the grid; left out, an even one over all levels that resolves the
-    broadening. Raises `BadInput` for a broadening that is not positive, and `TooLarge` where
-    the complete spectrum is out of reach.
+    broadening. ``method`` "exact" takes the complete spectrum, "moments" Chebyshev moments, which
+    give the same shape for rings of any size (random vectors of ``seed`` where all unit vectors
+    would be too many: see `spectral_moments`), and "auto" the complete spectrum where the ring
+    is clean or has at most 2,500 sites, else moments. Raises `BadInput` for a broadening that is
+    not positive, and `TooLarge` where the complete spectrum is out of reach or the moments
+    cannot resolve the broadening.
 
     >>> from ribbon.lattice import Network
     >>> from ribbon.hopping import Hopping, assemble
@@ -80,7 +100,15 @@ def density_of_states(
     >>> round(float(density_of_states(dimer, broadening=0.1).integrated[-1]), 6)
     2.0
     """
-    blocks = blocks_of(hamiltonian)
+    if method not in {"auto", "exact", "moments"}:
+        raise BadInput(f'method = {method!r} must be "auto", "exact" or "moments"')
+    check_broadening(broadening)
+    blocks = None if method == "moments" else blocks_of(hamiltonian)
+    cheap = hamiltonian.n <= LARGEST_DENSE and fits_dense(hamiltonian, flux, states=False)
+    if method == "moments" or (method == "auto" and blocks is None and not cheap):
+        count = moments_for(hamiltonian, broadening, flux=flux)
+        moments = spectral_moments(hamiltonian, count, flux=flux, seed=seed)
+        return moments_density(moments, broadening=broadening, energies=energies)
     found = all_levels(hamiltonian, flux=flux).energies if blocks is None else blocks.energies(flux)
     return _of_levels(found, broadening, energies, unit=hamiltonian.unit, complete=True)
 
@@ -102,6 +130,64 @@ def levels_density(
     )
 
 
+def moments_density(
+    moments: Moments, *, broadening: float | None = None, energies: ArrayLike | None = None
+) -> Density:
+    """Density of states from Chebyshev moments (see `Density` and `spectral_moments`).
+
+    With a ``broadening`` every level is a Gaussian of that standard deviation, to a millionth of
+    its peak. Left out, it is Jackson's kernel, the best these moments resolve:
+    ``Density.broadening`` is then the width in the middle of the interval, `Moments.resolution`,
+    and ``energies``, left out, are twice as many points as moments, closer towards the ends.
+    Raises `BadInput` for a broadening that is not positive or too fine for the moments.
+
+    >>> from ribbon.lattice import Network
+    >>> from ribbon.hopping import Hopping, assemble
+    >>> dimer = assemble(Network.from_pairs([(0, 1)]), Hopping())
+    >>> found = moments_density(spectral_moments(dimer, 200), energies=[0.0])
+    >>> round(float(found.integrated[0]), 6), round(found.broadening, 4)
+    (1.0, 0.0157)
+    """
+    low, high = moments.middle - moments.half, moments.middle + moments.half
+    places = nodes(moments.count, moments.middle, moments.half)
+    if broadening is None:
+        width = moments.resolution
+        energies = places if energies is None else energies
+
+        def spread(at: FloatArray) -> tuple[FloatArray, FloatArray]:
+            found, below = jackson_series(moments.samples, (at - moments.middle) / moments.half)
+            return found / moments.half, below
+    else:
+        check_broadening(broadening)
+        width = float(broadening)
+        if width < moments.finest * (1 - 1e-9):
+            raise BadInput(
+                f"levels.broadening = {width:g} is finer than {moments.count} moments resolve; "
+                f"ask for {moments.finest:.3g} or more, or for more moments (see moments_for)"
+            )
+        weights = point_weights(moments.samples)
+
+        def spread(at: FloatArray) -> tuple[FloatArray, FloatArray]:
+            return broadened(places, at, width, weights)
+
+    at, density, integrated = _on_grid(spread, (low, high), width, energies)
+    reach = 0.0 if broadening is None else REACH * width
+    edges = bins(low - reach, high + reach, width)
+    return Density(
+        energies=at,
+        density=density.mean(axis=0),
+        integrated=integrated.mean(axis=0),
+        edges=edges,
+        counts=np.diff(spread(edges)[1].mean(axis=0)),
+        broadening=width,
+        levels=moments.sites,
+        complete=True,
+        unit=moments.unit,
+        error=None if moments.exact else standard_error(density),
+        method="moments",
+    )
+
+
 def _of_levels(
     levels: FloatArray,
     broadening: float,
@@ -111,25 +197,21 @@ def _of_levels(
     complete: bool,
     below: int = 0,
 ) -> Density:
-    if not (np.isfinite(broadening) and broadening > 0):
-        raise BadInput(f"levels.broadening = {broadening} must be a positive energy")
+    check_broadening(broadening)
     if not levels.size:
         raise BadInput("a density of states needs levels; this window holds none")
-    grid = _grid(levels, broadening) if energies is None else np.array(energies, float)
-    density, under = _broadened(levels, grid, broadening)
-    step = float(grid[1] - grid[0]) if energies is None else 0.0
-    if step > broadening / 2:  # too coarse to sample: the mean over each step keeps the integral
-        _, ends = _broadened(levels, np.append(grid - step / 2, grid[-1] + step / 2), broadening)
-        density = np.diff(ends) / step
+
+    def spread(at: FloatArray) -> tuple[FloatArray, FloatArray]:
+        return broadened(levels, at, broadening, np.ones((1, levels.size)))
+
     low, high = float(levels[0]), float(levels[-1])
-    bins = int(np.clip(np.ceil((high - low) / broadening) + 1, 1, MOST_POINTS))
-    middle, half = (low + high) / 2, max(bins * broadening, 1.001 * (high - low)) / 2
-    edges = np.linspace(middle - half, middle + half, bins + 1)
+    at, density, under = _on_grid(spread, (low, high), broadening, energies)
+    edges = bins(low, high, broadening)
     counts, _ = np.histogram(levels, edges)
     return Density(
-        energies=grid,
-        density=density,
-        integrated=below + under,
+        energies=at,
+        density=density[0],
+        integrated=below + under[0],
         edges=edges,
         counts=counts.astype(np.int64),
         broadening=float(broadening),
@@ -139,26 +221,17 @@ def _of_levels(
     )
 
 
-def _grid(energies: FloatArray, broadening: float) -> FloatArray:
-    low, high = energies[0] - REACH * broadening, energies[-1] + REACH * broadening
-    points = int(np.clip(np.ceil((high - low) / broadening * 4), POINTS, MOST_POINTS))
-    return np.linspace(low, high, points)
-
-
-def _broadened(
-    energies: FloatArray, grid: FloatArray, broadening: float
-) -> tuple[FloatArray, FloatArray]:
-    """Sum of Gaussians and of their integrals, a piece of the grid at a time."""
-    density, below = np.empty(grid.size), np.empty(grid.size)
-    reach = 9 * broadening
-    for first in range(0, grid.size, 64):
-        part = grid[first : first + 64]
-        low = int(np.searchsorted(energies, part.min() - reach))
-        high = int(np.searchsorted(energies, part.max() + reach))
-        off = (part[:, None] - energies[low:high]) / broadening
-        density[first : first + 64] = np.exp(-(off**2) / 2).sum(axis=1)
-        below[first : first + 64] = low + (1 + erf(off / np.sqrt(2))).sum(axis=1) / 2
-    return density / (broadening * np.sqrt(2 * np.pi)), below
+def _on_grid(
+    spread: Spread, ends: tuple[float, float], broadening: float, energies: ArrayLike | None
+) -> tuple[FloatArray, FloatArray, FloatArray]:
+    """The grid, and the density and its integral on it."""
+    at = grid(*ends, broadening) if energies is None else np.array(energies, float)
+    density, below = spread(at)
+    step = float(at[1] - at[0]) if energies is None else 0.0
+    if step > broadening / 2:  # too coarse to sample: the mean over each step keeps the integral
+        _, under = spread(np.append(at - step / 2, at[-1] + step / 2))
+        density = np.diff(under, axis=1) / step
+    return at, density, below
 
 
 def local_density(levels: Levels, energy: float, *, broadening: float) -> FloatArray:
@@ -168,8 +241,7 @@ def local_density(levels: Levels, energy: float, *, broadening: float) -> FloatA
     level within about six widths; raises `BadInput` where ``levels`` holds no states.
     """
     states = _states(levels)
-    if not (np.isfinite(broadening) and broadening > 0):
-        raise BadInput(f"levels.broadening = {broadening} must be a positive energy")
+    check_broadening(broadening)
     off = (energy - levels.energies) / broadening
     weight = np.exp(-(off**2) / 2) / (broadening * np.sqrt(2 * np.pi))
     return np.asarray(np.abs(states) ** 2 @ weight)

@@ -185,6 +185,9 @@ def _density(result: StudyResult) -> Caption:
     assert case.density is not None
     found = case.density
     whole = "the complete spectrum" if found.complete else f"the {found.levels:,} levels found"
+    if found.error is not None:
+        worst = percent(float(np.max(found.error) / np.max(found.density)))
+        whole = f"moments of random vectors (standard error up to {worst} of the peak)"
     return Caption(
         "Density of states",
         f"Levels per energy and site from {whole}, each a Gaussian of standard deviation "

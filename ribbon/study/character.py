@@ -5,23 +5,18 @@ from __future__ import annotations
 from dataclasses import replace
 
 from ribbon.analysis import (
-    Density,
     compare_continuum,
     continuum_shift,
     density_of_states,
     edge_states,
     levels_density,
 )
-from ribbon.analysis.exact import blocks_of, fits_dense
 from ribbon.errors import BadInput, NotCertified, TooLarge
 from ribbon.study.build import Plan
 from ribbon.study.cases import threads_for
 from ribbon.study.result import Case
 
 __all__ = ["with_continuum", "with_density", "with_edges", "with_shift"]
-
-LARGEST_DENSE = 2500
-"""Complete spectra are diagonalised dense for the sake of a density up to so many sites."""
 
 
 def with_edges(plan: Plan, case: Case) -> Case:
@@ -36,21 +31,19 @@ def with_edges(plan: Plan, case: Case) -> Case:
 
 
 def with_density(plan: Plan, case: Case) -> Case:
-    """Add the density of states: of the complete spectrum where it is cheap, else the window."""
-    return replace(case, density=_density(plan, case))
+    """Add the density of states: from all levels where they are cheap, else from moments.
 
-
-def _density(plan: Plan, case: Case) -> Density | None:
+    Where the broadening is too fine for moments, the window's levels alone are shown.
+    """
     hamiltonian, width = case.hamiltonian, plan.file.levels.broadening
-    cheap = blocks_of(hamiltonian) is not None or (
-        hamiltonian.n <= LARGEST_DENSE and fits_dense(hamiltonian, case.flux, states=False)
-    )
-    if cheap:
+    try:
         with threads_for(hamiltonian):
-            return density_of_states(hamiltonian, broadening=width, flux=case.flux)
-    if not case.levels.m:
-        return None
-    return levels_density(case.levels, broadening=width, sites=hamiltonian.n)
+            found = density_of_states(hamiltonian, broadening=width, flux=case.flux)
+    except TooLarge:
+        if not case.levels.m:
+            return case
+        found = levels_density(case.levels, broadening=width, sites=hamiltonian.n)
+    return replace(case, density=found)
 
 
 def with_continuum(plan: Plan, case: Case) -> Case:

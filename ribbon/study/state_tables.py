@@ -84,10 +84,18 @@ def density_table(case: Case) -> Table:
     found = case.density
     if found is None:
         raise ValueError(f"{case.name} has no density of states")
+    columns: dict[str, Column] = {
+        "energy": found.energies,
+        "density": found.density,
+        "levels_below": found.integrated,
+    }
+    if found.error is not None:
+        columns["error"] = found.error
+    per_energy = f"levels per {found.unit}"
     return Table(
         f"density-{case.name}",
-        {"energy": found.energies, "density": found.density, "levels_below": found.integrated},
-        {"energy": found.unit, "density": f"levels per {found.unit}"},
+        columns,
+        {"energy": found.unit, "density": per_energy, "error": per_energy},
         f"Density of states of the {case.label}, broadened by {found.broadening:g} {found.unit}",
     )
 

@@ -184,7 +184,11 @@ def _density(case: Case) -> dict[str, Any]:
     if found is None:
         return {}
     unit = {"units": found.unit}
+    error = {} if found.error is None else {
+        "density_error": (("density_point",), found.error, {"units": f"1/{found.unit}"})
+    }  # fmt: skip
     return {
+        **error,
         "density_energy": (("density_point",), found.energies, unit),
         "density": (
             ("density_point",),

@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import math
 import re
+from dataclasses import replace
 from typing import Any
 
 import numpy as np
@@ -16,8 +17,10 @@ from brute import Case
 
 from ribbon.errors import BadInput, TooLarge
 from ribbon.hopping.units import boltzmann
-from ribbon.study import cases as run_module
+from ribbon.study import cases as cases_module
 from ribbon.study import forecast as forecast_module
+from ribbon.study.build import build
+from ribbon.study.character import with_density
 from ribbon.study.figures import draw_all, to_svg
 from ribbon.study.report import render_report
 from ribbon.study.result import StudyResult
@@ -369,7 +372,7 @@ def test_every_level_can_be_asked_for() -> None:
 
 def test_a_cover_that_would_take_too_long_is_not_swept(monkeypatch: pytest.MonkeyPatch) -> None:
     """Its levels stay, its sweep is left out with a note; the ribbon's own is kept."""
-    monkeypatch.setattr(run_module, "SLOW_SWEEP", 0.0)
+    monkeypatch.setattr(cases_module, "SLOW_SWEEP", 0.0)
     result = run_study(file_of(Case("square", 2, 6, 1, -1), disorder={"strength": 1.0}))
     swept = {case.name: case.response is not None for case in result.cases}
     assert swept == {"ribbon": True, "plain": True, "double": False}
@@ -413,7 +416,7 @@ def test_states_are_kept_up_to_a_size(monkeypatch: pytest.MonkeyPatch) -> None:
     """Beyond it levels come alone; the certificate is checked either way."""
     file = file_of(Case("square", 2, 6, 1, -1), levels={"all": True}, control={"compare": []})
     assert run_levels(file).ribbon.levels.states is not None
-    monkeypatch.setattr(run_module, "MOST_KEPT", 16)
+    monkeypatch.setattr(cases_module, "MOST_KEPT", 16)
     without = run_levels(file)
     assert without.ribbon.levels.states is None
     names = {check.name for check in without.checks}
@@ -467,3 +470,30 @@ def test_the_same_file_gives_the_same_numbers() -> None:
         np.testing.assert_array_equal(first.response.slope, second.response.slope)
         np.testing.assert_array_equal(first.response.branch, second.response.branch)
     assert [check.value for check in one.checks] == [check.value for check in two.checks]
+
+
+def test_the_density_of_a_large_disordered_ring_comes_from_moments() -> None:
+    """Too many sites for a dense spectrum: the whole band all the same, with its error."""
+    tables = {
+        "ribbon": {"lattice": "square", "rows": 4, "length": 700, "orbital": "s"},
+        "disorder": {"strength": 1.0},
+        "levels": {"count": 4, "broadening": 0.2},
+        "control": {"compare": []},
+        "sweep": {"flux": {"points": 2}},
+    }
+    plan = build(RibbonFile.model_validate({**tables, "hopping": {"unit": "t"}}))
+    case = with_density(plan, cases_module.levels_case(plan, plan.model))
+    found = case.density
+    assert found is not None
+    assert (found.method, found.complete) == ("moments", True)
+    whole = np.trapezoid(found.density, found.energies)
+    assert whole == pytest.approx(2800, rel=1e-3)
+    fine = with_density(replace_broadening(plan, 1e-9), case).density
+    assert fine is not None
+    assert (fine.method, fine.complete) == ("levels", False)
+
+
+def replace_broadening(plan: Any, width: float) -> Any:
+    """The same plan with another broadening."""
+    levels = plan.file.levels.model_copy(update={"broadening": width})
+    return replace(plan, file=plan.file.model_copy(update={"levels": levels}))
