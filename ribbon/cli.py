@@ -16,6 +16,7 @@ import typer
 
 from ribbon.commands.build import export, new
 from ribbon.commands.look import describe, lattices
+from ribbon.commands.molecule import molecule
 from ribbon.commands.output import ReaderGoneError, emit, hush_stdout, note
 from ribbon.commands.study import study
 from ribbon.commands.tables import continuum, edges, flux, levels
@@ -42,7 +43,7 @@ app = typer.Typer(
     pretty_exceptions_enable=False,
     add_completion=False,
 )
-for verb in (study, describe, levels, flux, edges, continuum, export, lattices, new):
+for verb in (study, describe, levels, flux, edges, continuum, molecule, export, lattices, new):
     app.command()(verb)
 
 

@@ -101,7 +101,7 @@ def test_help_lists_every_verb(run):
     """All verbs, each with one line that is not cut short."""
     status, out, _ = run("--help")
     assert status == 0
-    verbs = ("study", "describe", "levels", "flux", "edges", "continuum")
+    verbs = ("study", "describe", "levels", "flux", "edges", "continuum", "molecule")
     for verb in (*verbs, "export", "lattices", "new"):
         assert f"\n  {verb} " in out
     assert "..." not in out.partition("Commands:")[2]
