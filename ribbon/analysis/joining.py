@@ -124,7 +124,7 @@ class Follower:
             source = old[mixed]
             if source.size:
                 states = states.astype(np.result_type(states, self.states))
-            states[:, mixed] = self.states[:, source]
+                states[:, mixed] = self.states[:, source]
             energies[mixed], slopes[mixed] = self.energies[source], self.slopes[source]
             fluxes[mixed], waits[mixed] = self.flux[source], self.waits[source] + 1
         self.branch, self.states, self.energies = branch, states, energies

@@ -1,15 +1,17 @@
 """Levels near one energy at every flux from one small matrix per flux.
 
 Every state of H(flux) = H(0) + U C(flux) U^H outside the spectrum of H(0) is (H(0) - E)^-1 U c:
-the same n-vectors at every flux. The basis holds these at a few energies spread over the window
-(they interpolate between; where two factors 1/(E - z) meet, the error is their product), and
-Krylov vectors of one inverse for levels that do not reach the seam. Not H but the inverse at one
-shift is projected, with the seam term exact, so that the levels sought are the outermost ones:
-by Cauchy's interlacing a projected level never lies nearer to the shift than the true one of its
-rank, hence as many as were counted are all there are. Energies err by the square of the
-residual. Slopes are those of A^-1 x, a step of inverse iteration that costs nothing on the seam;
-they are derivatives of the projected levels and also err by the square (Parlett, The Symmetric
-Eigenvalue Problem, 1998, for interlacing and residual bounds).
+the same n-vectors at every flux. The basis holds the columns of (H(0) - z)^-1 U at a few energies
+z spread over the window, which interpolate at the energies between (far better than as many
+powers of one inverse), and Krylov vectors of one inverse for levels that do not reach the seam.
+
+Not H but the inverse at one shift is projected, with the seam term exact, so that the levels
+sought are the outermost ones: by Cauchy's interlacing a projected level never lies nearer to the
+shift than the true one of its rank, hence as many as were counted are all there are. Energies err
+by the square of the residual. Slopes are those of A^-1 x, a step of inverse iteration that costs
+nothing on the seam; they are the derivatives of the projected levels and also err by the square,
+where those of x itself err by the residual (Parlett, The Symmetric Eigenvalue Problem, 1998, for
+interlacing and residual bounds; recalled from memory).
 """
 
 from __future__ import annotations

@@ -120,6 +120,11 @@ def sweep_reduced(
     return out
 
 
+def enough_fluxes(hamiltonian: Hamiltonian, fluxes: FloatArray) -> bool:
+    """True where a sweep has so many different fluxes that one reduced problem pays."""
+    return _folded(fluxes).size >= FEWEST * (1 + SMALL / hamiltonian.n)
+
+
 def find_reduced(
     hamiltonian: Hamiltonian,
     fluxes: FloatArray,
@@ -131,12 +136,13 @@ def find_reduced(
     """A reduced problem for the ``count`` levels nearest to ``near`` or those ``between``.
 
     None where it would not pay or cannot be made accurate: few fluxes, a small ring, a seam that
-    is long against it, more levels than the memory allowed, an energy at which H(0) is singular.
+    is long against it, more levels than the memory allowed holds, an energy at which H(0) is
+    singular.
     """
+    if not enough_fluxes(hamiltonian, fluxes):
+        return None
     seam = find_seam(hamiltonian)
     room = _room(hamiltonian)
-    if _folded(fluxes).size < FEWEST * (1 + SMALL / hamiltonian.n):
-        return None
     if not 0 < _need(count if between is None else 0, seam) <= room:
         return None
     edges = None
@@ -150,13 +156,11 @@ def find_reduced(
     try:
         search = _Search(hamiltonian, seam, near=near, count=count, edges=edges)
         found = search.run(_probes(fluxes, PROBES))
-        return (
-            None
-            if found is None
-            else found.learn(_probes(fluxes, max(2, min(LESSONS, fluxes.size // EVERY))))
-        )
     except (RuntimeError, np.linalg.LinAlgError):
         return None
+    if found is None:
+        return None
+    return found.learn(_probes(fluxes, max(2, min(LESSONS, fluxes.size // EVERY))))
 
 
 def _room(hamiltonian: Hamiltonian) -> int:

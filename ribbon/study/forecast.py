@@ -18,6 +18,7 @@ from threadpoolctl import threadpool_limits
 from ribbon.analysis import Window
 from ribbon.analysis.exact import blocks_of, dense_bytes, fits_dense
 from ribbon.analysis.levels import FloatArray
+from ribbon.analysis.reduction import enough_fluxes
 from ribbon.errors import TooLarge
 from ribbon.hopping import Hamiltonian
 
@@ -40,6 +41,9 @@ DENSE_VALUES = 1.5e-10
 BLOCK = 2.0e-9
 BLOCK_BASE = 2.0e-6
 SPARSE_SITE = 1.0e-4
+REDUCED_SITE = 6.0e-5
+REDUCED_FLUX = 3.0e-3
+REDUCED_VECTORS = 400
 BYTES_PER_ROW = 400
 """Of a level at one flux: arrays, tables and their text."""
 MOST_KEPT = 256 * 1024**2
@@ -136,6 +140,10 @@ def forecast_sweep(hamiltonian: Hamiltonian, fluxes: FloatArray, window: Window)
         points = np.unique(reduced).size
     wanted = levels_wanted(hamiltonian, window)
     held = BYTES_PER_ROW * fluxes.size * wanted
+    if one.method == "sparse" and window.method == "auto" and enough_fluxes(hamiltonian, fluxes):
+        seconds = slowness() * (REDUCED_SITE * hamiltonian.n + REDUCED_FLUX * points)
+        basis = 8 * REDUCED_VECTORS * hamiltonian.n
+        return Forecast(method="reduced", seconds=seconds, bytes=one.bytes + held + basis)
     if one.method == "dense":  # states of the window at every flux, until its mirror comes
         held += 16 * points * hamiltonian.n * wanted
     return Forecast(method=one.method, seconds=one.seconds * points, bytes=one.bytes + held)

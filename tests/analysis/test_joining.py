@@ -20,7 +20,7 @@ from hypothesis import strategies as st
 
 from ribbon.analysis import Window, all_levels, sweep_flux
 from ribbon.analysis.exact import blocks_of
-from ribbon.analysis.joining import follow_bands, follow_states
+from ribbon.analysis.joining import Follower, follow_bands, follow_states
 
 Build = Callable[..., Any]
 LEVEL = 1e-9
@@ -262,3 +262,16 @@ def test_progress_is_told(hamiltonian_of: Build) -> None:
         hamiltonian = hamiltonian_of(Case("square", 2, 6, 1), width * np.linspace(-1, 1, 12))
         sweep_flux(hamiltonian, [0.0, 0.1, 0.2], progress=lambda *step: told.append(step))
     assert told == 2 * [(1, 3), (2, 3), (3, 3)]
+
+
+def test_real_states_follow_complex_ones() -> None:
+    """At flux 0 states may be real: a follower that holds complex ones takes them without a word.
+
+    (numpy warns, and the tests turn warnings into errors.)
+    """
+    follower = Follower()
+    turned = np.array([[1.0, 1.0], [1.0j, -1.0j]]) / np.sqrt(2)
+    energies, slopes = np.array([0.0, 1.0]), np.zeros(2)
+    first = follower.join(turned, energies, slopes, 0.1)
+    second = follower.join(np.eye(2), energies, slopes, 0.0)
+    assert second.tolist() == first.tolist() == [0, 1]
