@@ -270,7 +270,7 @@ def test_real_states_follow_complex_ones() -> None:
     (numpy warns, and the tests turn warnings into errors.)
     """
     follower = Follower()
-    turned = np.array([[1.0, 1.0], [1.0j, -1.0j]]) / np.sqrt(2)
+    turned = np.diag([1.0j, 1.0])
     energies, slopes = np.array([0.0, 1.0]), np.zeros(2)
     first = follower.join(turned, energies, slopes, 0.1)
     second = follower.join(np.eye(2), energies, slopes, 0.0)
