@@ -3,28 +3,41 @@
 The counts at the edges say how many levels the window holds; the iteration goes on, with what
 it has found projected out, until it has that many. Partners of degenerate levels that a Krylov
 space cannot see from one start vector come up in the next round.
+
+The inverse comes from the compiled elimination along a band where there is one, else from
+SuperLU: with pivots near the diagonal, which keeps the factor small, and where its solution does
+not stand the test, with full pivoting.
 """
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Callable, Iterator
+from dataclasses import dataclass, replace
 
 import numpy as np
-import scipy.linalg
 from numpy.typing import NDArray
 from scipy.sparse import csc_array, csr_array, eye_array
-from scipy.sparse.linalg import ArpackNoConvergence, LinearOperator, SuperLU, eigsh, splu
+from scipy.sparse.linalg import splu
 
-from ribbon.analysis.levels import AnyArray, FloatArray
+from ribbon.analysis.front import Band, factor_along
+from ribbon.analysis.lanczos import largest, turn_rows
+from ribbon.analysis.levels import AnyArray, FloatArray, IntArray
 from ribbon.errors import NotCertified
 
 __all__ = ["Found", "levels_of_window", "nearest_levels"]
 
 ROUNDS = 8
-SPARE = 6
+SPARE = 3
 CONVERGED = 1e-9
+POLISHED = 5e-12
+ACCURATE = 1e-10
+CALM = 1e8
+"""Growth in units of the scale up to which a factor gives states that need no polish."""
+SMALL = 64
 OFFSETS = (1.618034e-7, -2.718282e-7, 3.141593e-6)
 """Shifts in units of the scale, at numbers on which no level stands by design."""
+ASIDE = (0.01618034, -0.02718282, 0.05772157, -0.1414214, 0.3141593)
+"""Shifts in units of the scale over the number of levels: less than their distance."""
 
 
 @dataclass(frozen=True, kw_only=True, eq=False)
@@ -36,10 +49,39 @@ class Found:
     residuals: FloatArray
 
 
-def nearest_levels(matrix: csr_array, energy: float, count: int, scale: float) -> Found:
+@dataclass(frozen=True, kw_only=True, eq=False)
+class _Inverse:
+    """Solves with the matrix less ``shift``; entries of vectors stand in the order ``sites``."""
+
+    shift: float
+    solve: Callable[[AnyArray], AnyArray]
+    sites: IntArray | None
+
+    def ordered(self, vector: AnyArray) -> AnyArray:
+        """A vector in the order of the solves."""
+        return vector if self.sites is None else vector[self.sites]
+
+    def restored(self, vector: AnyArray) -> AnyArray:
+        """A vector in the order of the matrix."""
+        if self.sites is None:
+            return vector
+        out = np.empty_like(vector)
+        out[self.sites] = vector
+        return out
+
+
+def nearest_levels(
+    matrix: csr_array, energy: float, count: int, scale: float, *, band: Band | None = None
+) -> Found:
     """About ``count`` levels near ``energy``, without a promise that none is missing."""
     none = np.zeros((matrix.shape[0], 0), dtype=matrix.dtype)
-    return _refine(matrix, _invert(matrix, energy, count, none, scale))
+    plan = _Plan(count=count, starts=1, scale=scale, band=band)
+    return _compact(_search(matrix, energy, none, plan))
+
+
+def _compact(found: Found) -> Found:
+    """The same, not holding on to the larger array that the states were part of."""
+    return replace(found, states=found.states.T.copy().T)
 
 
 def levels_of_window(
@@ -49,6 +91,7 @@ def levels_of_window(
     *,
     scale: float,
     guess: Found | None = None,
+    band: Band | None = None,
 ) -> Found:
     """The ``wanted`` levels between two energies, all of them.
 
@@ -63,16 +106,18 @@ def levels_of_window(
         return _only(found, firm & (found.energies >= lower) & (found.energies <= upper))
 
     none = np.zeros((matrix.shape[0], 0), dtype=matrix.dtype)
-    inside = _refine(matrix, none) if guess is None else inside_window(guess)
+    empty = Found(energies=np.zeros(0), states=none, residuals=np.zeros(0))
+    inside = empty if guess is None else inside_window(guess)
     centre = (lower + upper) / 2
     for attempt in range(ROUNDS):
         missing = wanted - inside.energies.size
         if missing <= 0:
             return inside
-        ahead = min(missing + SPARE, matrix.shape[0] - inside.energies.size - 1)
+        ahead = min(missing + SPARE * (attempt + 1), matrix.shape[0] - inside.energies.size - 1)
         place = centre + (upper - lower) * 0.1 * attempt * (-1) ** attempt / ROUNDS
-        fresh = _invert(matrix, place, max(ahead, 1), inside.states, scale)
-        found = _refine(matrix, np.concatenate([inside.states, fresh], axis=1))
+        # a level of multiplicity g shows itself g times only to g start vectors
+        plan = _Plan(count=max(ahead, 1), starts=min(missing, 4**attempt), scale=scale, band=band)
+        found = _compact(_search(matrix, place, inside.states, plan))
         inside = inside_window(found)
     if inside.energies.size == wanted:
         return inside
@@ -84,6 +129,8 @@ def levels_of_window(
 
 
 def _only(found: Found, chosen: NDArray[np.bool_]) -> Found:
+    if np.all(chosen):
+        return found
     return Found(
         energies=found.energies[chosen],
         states=found.states[:, chosen],
@@ -91,56 +138,128 @@ def _only(found: Found, chosen: NDArray[np.bool_]) -> Found:
     )
 
 
-def _invert(
-    matrix: csr_array, energy: float, count: int, known: AnyArray, scale: float
-) -> AnyArray:
-    """Approximate states near ``energy`` orthogonal to the ``known`` ones."""
-    factor = _factorise(matrix, energy, scale)
-    n = matrix.shape[0]
+@dataclass(frozen=True, kw_only=True, eq=False)
+class _Plan:
+    """How many levels to look for, from how many start vectors, and what helps."""
 
-    def apply(vector: AnyArray) -> AnyArray:
-        flat = vector.ravel()
-        flat = flat - known @ (known.conj().T @ flat)
-        flat = factor.solve(flat.astype(matrix.dtype))
-        return np.asarray(flat - known @ (known.conj().T @ flat))
-
-    operator = LinearOperator((n, n), matvec=apply, dtype=matrix.dtype)
-    start = np.random.default_rng(known.shape[1]).standard_normal(n)
-    space = min(n, max(2 * count + 1, 20))
-    try:
-        _, states = eigsh(
-            operator, k=min(count, n - 2), which="LM", v0=apply(start), tol=0.0, ncv=space
-        )
-    except ArpackNoConvergence as problem:
-        states = problem.eigenvectors
-    return np.asarray(states)
+    count: int
+    starts: int
+    scale: float
+    band: Band | None
 
 
-def _factorise(matrix: csr_array, energy: float, scale: float) -> SuperLU:
-    """LU of matrix - energy, the shift moved a little so that it hits no level exactly.
+def _search(matrix: csr_array, energy: float, known: AnyArray, plan: _Plan) -> Found:
+    """The ``known`` states and about ``count`` more near ``energy``, refined together."""
+    n, old, scale = matrix.shape[0], known.shape[1], plan.scale
+    if n <= max(SMALL, 3 * (plan.count + plan.starts) + old):
+        energies, states = np.linalg.eigh(matrix.toarray())
+        near = np.argsort(np.abs(energies - energy))[: plan.count + old]
+        return _refine(matrix, np.concatenate([known.T, states[:, near].T]))
+    inverse, start = _inverse(matrix, energy, scale, plan.band)
+    shield = np.array([inverse.ordered(column) for column in known.T]).reshape(old, n)
 
-    Levels of clean lattices sit on round energies, and an exactly singular matrix not only has
-    no LU: SuperLU can take the whole process down on one. Full partial pivoting: special
-    energies break weaker kinds.
+    def apart(vector: AnyArray) -> AnyArray:
+        return vector - (shield @ vector.conj()).conj() @ shield if old else vector
+
+    starts = np.random.default_rng(old).standard_normal((plan.starts, n)).astype(matrix.dtype)
+    starts[0] = start
+    starts = np.array([apart(vector) for vector in starts])
+    ritz = largest(lambda vector: apart(inverse.solve(apart(vector))), starts, plan.count)
+    for row in ritz.vectors:
+        row[:] = inverse.restored(row)
+    rows = np.concatenate([known.T, ritz.vectors]) if old else ritz.vectors
+    found = _refine(matrix, rows)
+    if np.any(found.residuals > POLISHED * scale):
+        found = _polish(matrix, found, inverse, POLISHED * scale)
+    return found
+
+
+def _polish(matrix: csr_array, found: Found, inverse: _Inverse, limit: float) -> Found:
+    """One step of correction for states whose residual an inexact factor left too large."""
+    rows = found.states.T
+    for place in np.flatnonzero(found.residuals > limit):
+        state = rows[place]
+        rest = matrix @ state - found.energies[place] * state
+        state -= inverse.restored(inverse.solve(inverse.ordered(rest)))
+    return _refine(matrix, rows)
+
+
+def _inverse(
+    matrix: csr_array, energy: float, scale: float, band: Band | None
+) -> tuple[_Inverse, AnyArray]:
+    """The inverse of matrix - energy, and a vector that it was tried on.
+
+    The shift is moved a little so that it hits no level exactly: levels of clean lattices sit on
+    round energies, and an exactly singular matrix not only has no factor: SuperLU can take the
+    whole process down on one.
     """
-    identity = eye_array(matrix.shape[0], format="csc", dtype=matrix.dtype)
-    for step in OFFSETS:
-        shifted = csc_array(matrix - (energy + step * scale) * identity)
-        try:
-            return splu(shifted, permc_spec="COLAMD")
-        except RuntimeError:
-            continue
+    given = np.random.default_rng(0).standard_normal(matrix.shape[0]).astype(matrix.dtype)
+    for inverse in _inverses(matrix, energy, scale, band):
+        found = inverse.solve(inverse.ordered(given))
+        size = float(np.linalg.norm(found))
+        if np.isfinite(size):
+            natural = inverse.restored(found)
+            rest = matrix @ natural - inverse.shift * natural - given
+            if np.linalg.norm(rest) <= ACCURATE * (scale * size + np.linalg.norm(given)):
+                return inverse, found
     raise NotCertified(f"the matrix minus {energy:.9g} cannot be factorised at or near this energy")
 
 
-def _refine(matrix: csr_array, states: AnyArray) -> Found:
-    """Rayleigh-Ritz in the span of the states: orthonormal states and their energies."""
-    if states.shape[1] == 0:
-        return Found(energies=np.zeros(0), states=states, residuals=np.zeros(0))
-    basis, upper = scipy.linalg.qr(states, mode="economic", check_finite=False)
-    firm = np.abs(np.diagonal(upper)) > 1e-8 * np.abs(upper).max()
-    basis = basis[:, firm]
-    energies, turn = scipy.linalg.eigh(basis.conj().T @ (matrix @ basis), check_finite=False)
-    refined = basis @ turn
-    residuals = np.linalg.norm(matrix @ refined - refined * energies, axis=0)
-    return Found(energies=energies, states=refined, residuals=residuals)
+def _inverses(
+    matrix: csr_array, energy: float, scale: float, band: Band | None
+) -> Iterator[_Inverse]:
+    """Factors to try, the quickest first."""
+    if band is not None:
+        yield from _along_band(matrix, energy, scale, band)
+    identity = eye_array(matrix.shape[0], format="csc", dtype=matrix.dtype)
+    symmetric = {"permc_spec": "MMD_AT_PLUS_A", "options": {"SymmetricMode": True}}
+    for options in ({**symmetric, "diag_pivot_thresh": 1e-3}, {"permc_spec": "COLAMD"}):
+        for step in OFFSETS:
+            shift = energy + step * scale
+            try:
+                factors = splu(csc_array(matrix - shift * identity), **options)
+            except RuntimeError:
+                continue
+            yield _Inverse(shift=shift, solve=factors.solve, sites=None)
+
+
+def _along_band(matrix: csr_array, energy: float, scale: float, band: Band) -> Iterator[_Inverse]:
+    """The compiled factor at the first shift where it grows little, else where it grows least."""
+    best, place = np.inf, energy
+    for step in ASIDE:
+        shift = energy + step * scale / matrix.shape[0]
+        factor = factor_along(matrix, shift, band)
+        if factor is not None and factor.grown < best:
+            best, place = factor.grown, shift
+        if factor is not None and best < CALM * scale:
+            break
+        del factor  # before the next one is made: two would double the memory
+        factor = None
+    if np.isfinite(best):
+        factor = factor_along(matrix, place, band) if factor is None else factor
+    if factor is not None:
+        yield _Inverse(shift=place, solve=factor.solve, sites=band.sites)
+
+
+def _refine(matrix: csr_array, rows: AnyArray) -> Found:
+    """Rayleigh-Ritz in the span of the rows, which it overwrites: orthonormal states, energies.
+
+    One vector at a time, so that a large window takes no second copy.
+    """
+    count = rows.shape[0]
+    overlaps = np.empty((count, count), dtype=rows.dtype)
+    elements = np.empty((count, count), dtype=rows.dtype)
+    for place, row in enumerate(rows):
+        overlaps[:, place] = (rows @ row.conj()).conj()
+        elements[:, place] = (rows @ (matrix @ row).conj()).conj()
+    weights, turn = np.linalg.eigh((overlaps + overlaps.conj().T) / 2)
+    firm = weights > 1e-8 * np.max(weights, initial=0.0)
+    whiten = turn[:, firm] / np.sqrt(weights[firm])
+    inner = whiten.conj().T @ elements @ whiten
+    energies, turn = np.linalg.eigh((inner + inner.conj().T) / 2)
+    turn_rows(rows, whiten @ turn)
+    rows = rows[: energies.size]
+    residuals = np.empty(energies.size)
+    for place, row in enumerate(rows):
+        residuals[place] = np.linalg.norm(matrix @ row - energies[place] * row)
+    return Found(energies=energies, states=rows.T, residuals=residuals)
