@@ -9,11 +9,9 @@ from __future__ import annotations
 
 import argparse
 import json
-import resource
 import subprocess
 import sys
 import tempfile
-import time
 from collections.abc import Iterator
 from pathlib import Path
 
@@ -21,7 +19,7 @@ import numpy as np
 
 from tests.benchmarks.densities import densities
 from tests.benchmarks.matrices import matrices
-from tests.benchmarks.measure import Row, median_seconds
+from tests.benchmarks.measure import Row, median_seconds, watched
 from tests.benchmarks.scaling import draw_scaling, scaling
 from tests.benchmarks.spectra import spectra
 from tests.benchmarks.sweeps import sweeps
@@ -48,17 +46,10 @@ def studies(quick: bool) -> Iterator[Row]:
         ]
     for name, options in jobs.items():
         with tempfile.TemporaryDirectory() as folder:
-            start = time.perf_counter()
             out = str(Path(folder) / "study")
-            subprocess.run(
-                [*command, "study", str(EXAMPLE), "--out", out, "--quiet", *options],
-                check=True,
-                capture_output=True,
-            )
-            taken = time.perf_counter() - start
-        # the largest child so far; the jobs run in ascending order of size
-        peak = resource.getrusage(resource.RUSAGE_CHILDREN).ru_maxrss / 1024
-        yield {"job": name, "seconds": taken, "peak_MB": peak}
+            arguments = [*command, "study", str(EXAMPLE), "--out", out, "--quiet", *options]
+            seconds, peak = watched(arguments)
+        yield {"job": name, "seconds": seconds, "peak_MB": peak}
 
 
 def main() -> None:

@@ -2,17 +2,19 @@
 
 from __future__ import annotations
 
+import contextlib
 import json
 import statistics
 import subprocess
 import sys
 import time
 from collections.abc import Callable
+from pathlib import Path
 from typing import Any
 
 from ribbon import Hamiltonian, Hopping, assemble, close_strip, lay_strip
 
-__all__ = ["Row", "alone", "compare", "median_seconds", "ring"]
+__all__ = ["Row", "alone", "compare", "median_seconds", "ring", "watched"]
 
 Row = dict[str, Any]
 
@@ -64,3 +66,21 @@ def alone(code: str) -> Row:
     )
     found: Row = json.loads(done.stdout.splitlines()[-1])
     return found
+
+
+def watched(arguments: list[str]) -> tuple[float, float]:
+    """Seconds and peak memory (MB) of a command, its memory read while it runs (Linux)."""
+    start, peak = time.perf_counter(), 0
+    with subprocess.Popen(arguments, stdout=subprocess.DEVNULL) as child:
+        status = Path(f"/proc/{child.pid}/status")
+        while child.poll() is None:
+            with contextlib.suppress(OSError):
+                peak = max(peak, *_high_water(status.read_text(encoding="ascii")))
+            time.sleep(0.02)
+    if child.returncode:
+        raise subprocess.CalledProcessError(child.returncode, arguments)
+    return time.perf_counter() - start, peak / 1024
+
+
+def _high_water(status: str) -> list[int]:
+    return [0, *(int(line.split()[1]) for line in status.splitlines() if line.startswith("VmHWM"))]

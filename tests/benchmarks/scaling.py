@@ -48,7 +48,7 @@ def scaling(quick: bool) -> Iterator[Row]:
 
 def draw_scaling(rows: list[Row], path: Path) -> None:
     """The figure of these rows, log-log."""
-    figure = Figure(figsize=(5.2, 3.4), layout="constrained")
+    figure = Figure(figsize=(6.4, 3.4), layout="constrained")
     axes = figure.subplots()
     for row, mark in zip((r for r in rows if "exponent" in r), "osD^v", strict=False):
         name = row["job"].partition(": ")[2]
@@ -56,5 +56,5 @@ def draw_scaling(rows: list[Row], path: Path) -> None:
         axes.loglog(row["sizes"], row["each"], marker=mark, ms=4, lw=1, label=label)
     axes.set_xlabel("sites")
     axes.set_ylabel("seconds")
-    axes.legend(frameon=False, fontsize=7)
+    axes.legend(frameon=False, fontsize=7, loc="upper left", bbox_to_anchor=(1.0, 1.0))
     figure.savefig(path, dpi=130)

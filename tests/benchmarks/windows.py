@@ -70,7 +70,7 @@ def _counts(quick: bool) -> Iterator[Row]:
         ours = median_seconds(lambda h=hamiltonian, f=flux: count_below(h, ENERGY, flux=f), 3)
         plain = median_seconds(
             lambda m=shifted: splu(
-                m, permc_spec="MMD_AT_PLUS_A", diag_pivot_thresh=0.01,
+                m, permc_spec="MMD_AT_PLUS_A", diag_pivot_thresh=0.0,
                 options={"SymmetricMode": True},
             ),
             1,
