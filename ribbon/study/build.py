@@ -10,6 +10,7 @@ from scipy.sparse import coo_array
 from scipy.sparse.csgraph import connected_components
 
 from ribbon.analysis import Filling, Window
+from ribbon.analysis.exact import blocks_of
 from ribbon.analysis.levels import FloatArray
 from ribbon.errors import BadInput, TooLarge
 from ribbon.hopping import Hamiltonian, Hopping, assemble, draw_vacancies, effective_mass
@@ -73,8 +74,14 @@ class Plan:
         return np.linspace(sweep.from_, sweep.to, sweep.points)
 
     def window_for(self, model: Model) -> Window:
-        """The window of a case: a cover that is twice as large has twice as many levels."""
-        return replace(self.window, count=self.window.count * max(1, round(model.size_scale)))
+        """The window of a case: a cover that is twice as large has twice as many levels.
+
+        A control without symmetry (the open strip) takes the way that fits it.
+        """
+        count = self.window.count * max(1, round(model.size_scale))
+        lacking = self.window.method == "symmetry" and blocks_of(model.hamiltonian) is None
+        own = model.name == "ribbon" or not lacking
+        return replace(self.window, count=count, method=self.window.method if own else "auto")
 
     def filling_for(self, model: Model) -> Filling:
         """The filling of a case: numbers of electrons grow with the cover."""

@@ -497,3 +497,18 @@ def replace_broadening(plan: Any, width: float) -> Any:
     """The same plan with another broadening."""
     levels = plan.file.levels.model_copy(update={"broadening": width})
     return replace(plan, file=plan.file.model_copy(update={"levels": levels}))
+
+
+def test_a_method_that_does_not_fit_a_control_is_not_forced_on_it() -> None:
+    """The open strip has no momentum: asked for symmetry, the ribbon gets it and the strip not."""
+    tables = {
+        "ribbon": {"lattice": "square", "rows": 3, "length": 6, "orbital": "s"},
+        "levels": {"method": "symmetry"},
+        "control": {"compare": ["open"]},
+        "sweep": {"flux": {"points": 2}},
+    }
+    result = run_study(RibbonFile.model_validate(tables))
+    ways = [case.levels.certificate.method for case in result.cases]
+    assert ways == ["symmetry", "dense"]
+    with pytest.raises(BadInput, match="does not apply"):
+        run_study(RibbonFile.model_validate({**tables, "disorder": {"strength": 1.0}}))
