@@ -134,6 +134,7 @@ def _compile() -> Any:
     try:
         compiled(bonds, even, odd, sums, 1)
     except (numba.core.errors.NumbaError, NotImplementedError):
+        # a processor or release that cannot compile this: the way without numba is as right
         return None
     return compiled if np.all(even == 1) and np.all(sums == 1) else None
 

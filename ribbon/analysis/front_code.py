@@ -324,5 +324,6 @@ def works() -> bool:
     try:
         below, carried, _ = eliminate(matrix, (places, places), 0.0, PANEL, work, held)
     except (numba.core.errors.NumbaError, NotImplementedError):
+        # a processor or release that cannot compile this: the way without numba is as right
         return False
     return bool(below == 5 and carried == 0)

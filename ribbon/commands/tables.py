@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
+from dataclasses import dataclass
 from pathlib import Path
-from typing import Annotated, TypeAlias
+from typing import TYPE_CHECKING, Annotated, Any, TypeAlias
 
 import typer
 
@@ -13,12 +15,47 @@ from ribbon.commands.output import check_target, guard_inputs
 from ribbon.commands.progress import Progress
 from ribbon.errors import BadInput, TooLarge
 
+if TYPE_CHECKING:
+    from ribbon.study.result import StudyResult
+    from ribbon.study.tables import Table
+
 __all__ = ["continuum", "edges", "flux", "levels"]
 
 Out: TypeAlias = Annotated[
     Path | None,
     typer.Option("--out", metavar="TABLE.csv", help="Write the table here, not to stdout."),
 ]
+
+
+@dataclass(frozen=True)
+class _Asked:
+    """What the verbs with one table share on their command lines."""
+
+    file: Path
+    out: Path | None
+    as_json: bool
+    overrides: list[str] | None
+    quiet: bool
+
+
+Tell = Callable[["StudyResult"], tuple["Table", dict[str, Any]]]
+"""The table of a result, and what its JSON says beside heading, checks and notes."""
+
+
+def _one_table(asked: _Asked, run: str, tell: Tell) -> None:
+    """Run what ``run`` names in the study room and deliver its table."""
+    check_target(asked.out, not_over=asked.file)
+    ribbon_file = load(asked.file, asked.overrides)
+    guard_inputs(ribbon_file, asked.out)
+    from ribbon.study import run as runs
+
+    with Progress(quiet=asked.quiet) as progress:
+        result, doubt = known(lambda: getattr(runs, run)(ribbon_file, progress=progress))
+    table, told = tell(result)
+    story = {**heading(result), "flux": result.ribbon.flux, **told, **trust(result)}
+    files = {} if asked.out is None else {asked.out: table}
+    deliver(table, story, files=files, as_json=asked.as_json, quiet=asked.quiet)
+    judge(result, doubt)
 
 
 def levels(
@@ -29,29 +66,21 @@ def levels(
     quiet: Quiet = False,
 ) -> None:
     """Print the levels that the file asks for (CSV)."""
-    check_target(out, not_over=file)
-    ribbon_file = load(file, overrides)
-    guard_inputs(ribbon_file, out)
-    from ribbon.study.run import run_levels
+    _one_table(_Asked(file, out, as_json, overrides, quiet), "run_levels", _levels)
+
+
+def _levels(result: StudyResult) -> tuple[Table, dict[str, Any]]:
     from ribbon.study.tables import levels_table
 
-    with Progress(quiet=quiet) as progress:
-        result, doubt = known(lambda: run_levels(ribbon_file, progress=progress))
     case = result.ribbon
-    table = levels_table(case, ribbon_file.hopping.unit)
-    story = {
-        **heading(result),
-        "flux": case.flux,
+    table = levels_table(case, result.file.hopping.unit)
+    return table, {
         "levels": table,
         "gap": case.gap,
         "other_gap": case.other_gap,
         "certificate": case.levels.certificate,
         "residual": case.levels.residual,
-        **trust(result),
     }
-    files = {} if out is None else {out: table}
-    deliver(table, story, files=files, as_json=as_json, quiet=quiet)
-    judge(result, doubt)
 
 
 def flux(
@@ -112,17 +141,15 @@ def edges(
 
     Edge weight, decay length, participation and edge momentum of every level.
     """
-    check_target(out, not_over=file)
-    ribbon_file = load(file, overrides)
-    guard_inputs(ribbon_file, out)
-    from ribbon.study.run import run_edges
+    _one_table(_Asked(file, out, as_json, overrides, quiet), "run_edges", _edges)
+
+
+def _edges(result: StudyResult) -> tuple[Table, dict[str, Any]]:
     from ribbon.study.state_tables import edges_table
 
-    with Progress(quiet=quiet) as progress:
-        result, doubt = known(lambda: run_edges(ribbon_file, progress=progress))
-    case = result.ribbon
-    assert case.edges is not None
-    table = edges_table(case)
+    found = result.ribbon.edges
+    assert found is not None
+    table = edges_table(result.ribbon)
     loops = [
         {
             "winding": loop.winding,
@@ -130,19 +157,9 @@ def edges(
             "length_nm": loop.length,
             "perimeter_nm": loop.perimeter,
         }
-        for loop in case.edges.loops
+        for loop in found.loops
     ]
-    story = {
-        **heading(result),
-        "flux": case.flux,
-        "within_nm": case.edges.within,
-        "edges": table,
-        "loops": loops,
-        **trust(result),
-    }
-    files = {} if out is None else {out: table}
-    deliver(table, story, files=files, as_json=as_json, quiet=quiet)
-    judge(result, doubt)
+    return table, {"within_nm": found.within, "edges": table, "loops": loops}
 
 
 def continuum(
@@ -153,26 +170,18 @@ def continuum(
     quiet: Quiet = False,
 ) -> None:
     """Print how far each level is from the continuum formula (CSV)."""
-    check_target(out, not_over=file)
-    ribbon_file = load(file, overrides)
-    guard_inputs(ribbon_file, out)
-    from ribbon.study.run import run_continuum
+    _one_table(_Asked(file, out, as_json, overrides, quiet), "run_continuum", _continuum)
+
+
+def _continuum(result: StudyResult) -> tuple[Table, dict[str, Any]]:
     from ribbon.study.state_tables import continuum_table, meshes_table
 
-    with Progress(quiet=quiet) as progress:
-        result, doubt = known(lambda: run_continuum(ribbon_file, progress=progress))
-    case = result.ribbon
-    assert case.continuum is not None
-    table = continuum_table(case)
-    story = {
-        **heading(result),
-        "flux": case.flux,
-        "kind": case.continuum.kind,
-        "zero": case.continuum.zero,
+    found = result.ribbon.continuum
+    assert found is not None
+    table = continuum_table(result.ribbon)
+    return table, {
+        "kind": found.kind,
+        "zero": found.zero,
         "continuum": table,
-        "meshes": meshes_table(case),
-        **trust(result),
+        "meshes": meshes_table(result.ribbon),
     }
-    files = {} if out is None else {out: table}
-    deliver(table, story, files=files, as_json=as_json, quiet=quiet)
-    judge(result, doubt)

@@ -115,7 +115,7 @@ class Network:
         Raises `BadInput` for a pair that joins a site to itself, stands twice, or names a site
         that does not exist.
         """
-        given = pairs if isinstance(pairs, np.ndarray) else np.array(list(pairs))  # type: ignore[arg-type]
+        given = pairs if isinstance(pairs, np.ndarray) else np.array(list(pairs))  # type: ignore[arg-type]  # any list
         ends = given.astype(np.int64).reshape(-1, 2)
         if positions is None:
             places = np.zeros(((int(ends.max()) + 1) if sites is None else sites, 2))

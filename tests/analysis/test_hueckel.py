@@ -501,7 +501,7 @@ def test_twist_on_a_straight_axis(rule: str) -> None:
         molecule = replace(bond_atoms(["C"] * sites, places / 10), axes=axes)
         frame = find_framework(molecule)
         atoms = pi_atoms(["C"] * sites, [3] * sites)
-        amplitudes = hueckel_matrix(frame, atoms, rule=rule).amplitudes  # type: ignore[arg-type]
+        amplitudes = hueckel_matrix(frame, atoms, rule=rule).amplitudes  # type: ignore[arg-type]  # text
         expected = -math.cos(math.pi * half_twists / sites)
         np.testing.assert_allclose(amplitudes, expected, rtol=0, atol=1e-12)
 

@@ -431,7 +431,7 @@ def test_levels_of_the_package_apply() -> None:
 def test_refuses_another_network_or_lattice() -> None:
     """A bare network has no strip; a honeycomb is no square mesh."""
     with pytest.raises(BadInput, match="needs a ring made by close_strip, not a Network"):
-        curved_hopping(Network.from_pairs([(0, 1)]), Hopping())  # type: ignore[arg-type]
+        curved_hopping(Network.from_pairs([(0, 1)]), Hopping())  # type: ignore[arg-type]  # wrong
     for name in ("honeycomb-zigzag", "triangular", "lieb", "kagome"):
         ring = close_strip(lay_strip(name, rows=3, length=30), half_twists=0)
         with pytest.raises(BadInput, match=f"lattice = '{name}'"):
@@ -466,7 +466,7 @@ def test_refuses_words_and_numbers_that_do_not_fit() -> None:
     with pytest.raises(BadInput, match="half_twists = -1 must be a whole number"):
         replace(good, half_twists=-1)
     with pytest.raises(BadInput, match="form = 'cone' must be"):
-        replace(good, form="cone")  # type: ignore[arg-type]
+        replace(good, form="cone")  # type: ignore[arg-type]  # wrong on purpose
     with pytest.raises(BadInput, match='which goes with "twisted"'):
         curved_hopping(ring_of(3, 20, 1), Hopping(), form="annulus")
     with pytest.raises(BadInput, match='which goes with "annulus" or "cylinder"'):

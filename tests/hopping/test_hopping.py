@@ -404,6 +404,6 @@ def test_a_hamiltonian_cannot_be_changed() -> None:
     """Frozen; replaced parts leave the first as it was."""
     hamiltonian = assemble(square(), Hopping())
     with pytest.raises(AttributeError):
-        hamiltonian.hopping = Hopping()  # type: ignore[misc]
+        hamiltonian.hopping = Hopping()  # type: ignore[misc]  # frozen: must fail
     weaker = replace(hamiltonian, amplitudes=0.5 * hamiltonian.amplitudes)
     np.testing.assert_array_equal(2 * weaker.matrix().toarray(), hamiltonian.matrix().toarray())

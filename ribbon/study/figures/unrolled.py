@@ -2,11 +2,12 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterable
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING
 
 import numpy as np
-from numpy.typing import NDArray
+from numpy.typing import ArrayLike, NDArray
 
 from ribbon.analysis import edge_content, shell_density, unroll
 from ribbon.analysis.density import shell_groups
@@ -158,7 +159,7 @@ def content_table(case: Case) -> Table:
     )
 
 
-def _joined(parts: object) -> NDArray[np.generic]:
+def _joined(parts: Iterable[ArrayLike]) -> NDArray[np.generic]:
     """Arrays one after the other; none at all make an empty one."""
-    arrays = [np.asarray(part) for part in parts]  # type: ignore[attr-defined]
+    arrays = [np.asarray(part) for part in parts]
     return np.concatenate(arrays) if arrays else np.zeros(0)
